@@ -25,7 +25,7 @@ var arrows = map[string][]string{
 	"limits/document":             {"limits/quantity", "limits/source"},
 	"limits":                      {"limits/quantity", "limits/source"},
 	"instruments":                 {"limits/quantity"},
-	"instruments/instrumentstest": {"instruments"},
+	"instruments/instrumentstest": {"instruments/link"},
 	"instruments/link":            {"instruments"},
 	"instruments/profile":         {"instruments/link", "limits/document"},
 	"instruments/virtual":         {"instruments/link", "limits/document"},
