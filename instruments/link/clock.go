@@ -56,3 +56,13 @@ func (w *Wall) wall(d time.Duration) time.Duration {
 	}
 	return time.Duration(float64(d)/w.pace) + 1
 }
+
+// Until is the time, on l's clock, from which an answer is late that may take timeout. Where the clock runs faster
+// than the wall, the timeout is of the wall: however fast a virtual bench is offered, the ports and the two programs
+// take the time that they take.
+func Until(l Link, timeout time.Duration) time.Time {
+	if w, ok := l.Clock().(*Wall); ok && w.pace > 1 {
+		timeout = time.Duration(float64(timeout) * w.pace)
+	}
+	return l.Clock().Now().Add(timeout)
+}

@@ -11,6 +11,7 @@
 // operating system keeps a second program out, whatever its rights.
 //
 //	l, err := link.OpenSerial(ctx, "/dev/ttyUSB0", settings, link.WallClock())
+//	until := link.Until(l, 500*time.Millisecond)
 //	err = l.Send([]byte("RATE?\r\n"))
 //	for !bytes.Contains(l.Peek(), []byte("\r\n")) && l.Clock().Now().Before(until) {
 //		err = l.Await(ctx, until)

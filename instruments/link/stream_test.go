@@ -240,6 +240,22 @@ func TestClockSleepsAtItsPace(t *testing.T) {
 	})
 }
 
+func TestUntilLeavesTheWallItsTime(t *testing.T) {
+	synctest.Test(t, func(t *testing.T) {
+		for pace, want := range map[float64]time.Duration{0.5: time.Second, 1: time.Second, 60: time.Minute} {
+			l, _ := pipe(pace)
+			if got := Until(l, time.Second).Sub(l.Clock().Now()); got != want {
+				t.Errorf("pace %v: a second's timeout ends after %v, want %v", pace, got, want)
+			}
+			l.Close()
+		}
+		host, _ := Memory(&world{now: start}, "table")
+		if got := Until(host, time.Second); got != at(time.Second) {
+			t.Errorf("on a memory link: %v", got.Sub(start))
+		}
+	})
+}
+
 func TestTCP(t *testing.T) {
 	listener, err := net.Listen("tcp", "127.0.0.1:0")
 	if err != nil {
