@@ -43,6 +43,7 @@ func Populations() []string {
 	for _, e := range entries {
 		names = append(names, strings.TrimSuffix(e.Name(), ".yaml"))
 	}
+	slices.Sort(names)
 	return names
 }
 

@@ -191,7 +191,7 @@ func TestBytesDoNotDependOnSlices(t *testing.T) {
 		}
 		return append(gyro, take(g)...), append(take(table), take(supply)...)
 	}
-	for population, volts := range map[string]string{"optical": "5"} {
+	for population, volts := range map[string]string{"optical": "5", "optical-angle": "5", "vibratory": "5", "spinning-mass": "28"} {
 		t.Run(population, func(t *testing.T) {
 			gyro, answers := scene(t, population, volts, time.Second, false)
 			if n := len(decode(t, gyro)); n < 18000 || n > 19500 {
@@ -221,6 +221,7 @@ func TestSleepEndsWithItsContext(t *testing.T) {
 func BenchmarkFrames(b *testing.B) {
 	for _, c := range []struct{ population, volts, table string }{
 		{"optical", "5", "STOP"}, {"optical", "5", "RATE 50.0 ACC 100.0"},
+		{"vibratory", "5", "STOP"}, {"spinning-mass", "28", "STOP"}, {"optical-angle", "5", "STOP"},
 	} {
 		b.Run(c.population+" "+c.table[:4], func(b *testing.B) {
 			w := world(b, Config{Seed: 1, Description: describe(b, 1), Gyros: map[instruments.SlotID]Setup{"A": fixed(b, c.population)}})
