@@ -108,25 +108,38 @@ func (w *World) catchUp() {
 	}
 }
 
-// Link gives the host's end of a memory link to "table", "chamber", "supply" or "gyro-1", "gyro-2" and so on, the slots
-// in the order of the description. A link taken anew replaces the one before.
-func (w *World) Link(endpoint string) (link.Link, error) {
-	attach := map[string]func(*link.Device){}
+// endpoint is one instrument of the bench and how it takes the far end of a link.
+type endpoint struct {
+	name   string
+	attach func(*link.Device)
+}
+
+func (w *World) endpoints() []endpoint {
+	var all []endpoint
 	if w.table != nil {
-		attach["table"] = w.table.attach
+		all = append(all, endpoint{"table", w.table.attach})
 	}
 	if w.chamber != nil {
-		attach["chamber"] = w.chamber.attach
+		all = append(all, endpoint{"chamber", w.chamber.attach})
 	}
-	attach["supply"] = w.supply.attach
+	all = append(all, endpoint{"supply", w.supply.attach})
 	for i, g := range w.gyros {
-		attach[fmt.Sprintf("gyro-%d", i+1)] = g.attach
+		all = append(all, endpoint{fmt.Sprintf("gyro-%d", i+1), g.attach})
 	}
-	to, ok := attach[endpoint]
-	if !ok {
-		return nil, &UnknownError{What: "endpoint of the virtual bench", Name: endpoint, Known: sorted(attach)}
+	return all
+}
+
+// Link gives the host's end of a memory link to "table", "chamber", "supply" or "gyro-1", "gyro-2" and so on, the slots
+// in the order of the description. A link taken anew replaces the one before.
+func (w *World) Link(name string) (link.Link, error) {
+	var known []string
+	for _, e := range w.endpoints() {
+		if e.name == name {
+			host, device := link.Memory(w, "virtual:"+name)
+			e.attach(device)
+			return host, nil
+		}
+		known = append(known, e.name)
 	}
-	host, device := link.Memory(w, "virtual:"+endpoint)
-	to(device)
-	return host, nil
+	return nil, &UnknownError{What: "endpoint of the virtual bench", Name: name, Known: known}
 }
