@@ -43,7 +43,7 @@ func newTable(w *World, seed uint64, maxRate, maxAccel, creep float64, hidden de
 		{1, tableRippleOnce, 2 * math.Pi * phases.Float64()},
 		{tableFinestRipple, tableRippleOften, 2 * math.Pi * phases.Float64()},
 	})
-	t.servo.follow(0, []leg{{motion: holding, rate: t.someCreep()}})
+	t.servo.follow(-int64(stillAfter), []leg{{motion: holding, rate: t.someCreep()}})
 	t.lines = lines{w: w, end: "\r\n", delay: tableDelay, do: t.command}
 	return t
 }

@@ -21,6 +21,7 @@ type Truth struct {
 	Axial                   float64 // of the table's true rate, along the input axis
 	Earth                   float64 // rate of the Earth along the input axis, mean over a turn, rad/s
 
+	world *World
 	slow  []markov
 	trace *trace
 }
@@ -32,7 +33,7 @@ func (w *World) Truth(slot instruments.SlotID) *Truth {
 			continue
 		}
 		t := &Truth{Gyro: g.p, Angle: g.angle, Count: g.count, Axial: g.mount.axial, Earth: g.mount.earth.constant,
-			slow: g.slow.stages, trace: g.trace}
+			world: w, slow: g.slow.stages, trace: g.trace}
 		if w.table != nil {
 			t.TableShare, t.TableOffset = w.table.hidden.share, w.table.hidden.offset
 		}
@@ -67,6 +68,7 @@ func (t *Truth) Window(start time.Time, first uint64, n int) (Window, error) {
 	if t.trace == nil {
 		return Window{}, &NoTraceError{"the world was made without Config.Trace"}
 	}
+	t.world.catchUp()
 	on := int64(start.Sub(began)) - int64(first)*framePeriodNs
 	var s *session
 	for _, one := range t.trace.sessions {
