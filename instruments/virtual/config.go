@@ -18,8 +18,6 @@ type Config struct {
 	Description *instruments.Description
 	Gyros       map[instruments.SlotID]Setup
 	Ambient     quantity.Value // temperature about the chamber; zero: 23 degC
-	// Trace keeps what Truth.Window needs.
-	Trace bool
 }
 
 // Setup is the gyro in one slot.
@@ -42,31 +40,23 @@ func New(c Config) (*World, error) {
 		}
 		ambient = c.Ambient.SI()
 	}
-	w := &World{seed: c.Seed, tick: 1}
-	w.climate = newClimate(ambient, stream(c.Seed, "chamber air"))
+	w := &World{tick: 1, climate: newClimate(ambient, stream(c.Seed, "chamber air"))}
 	servo, frame := newServo(nil), newAxes(instruments.Vector{0, 0, 1}, [2]float64{})
-	if t := d.Table; t != nil {
-		if dot(t.Axis, t.Axis) == 0 {
-			return nil, errors.New("the table's axis has no direction; give it as east, north, up")
+	if d.Table != nil {
+		var err error
+		if w.table, frame, err = c.table(w, d.Table); err != nil {
+			return nil, err
 		}
-		frame = newAxes(t.Axis, small(stream(c.Seed, "table axis"), t.AxisUncertainty.SI()))
-		w.table = newTable(w, c.Seed, t.MaxRate.As(degPerS), t.MaxAcceleration.As(degPerS2), t.Creep.SI(),
-			hidden(d, t.Instrument, "table.rate", stream(c.Seed, "table rate")))
 		servo = w.table.servo
 	}
 	if t := d.Chamber; t != nil {
-		w.chamber = &chamber{w: w, climate: w.climate, low: t.Low.SI(), high: t.High.SI(), own: t.Ramp.SI(),
+		w.chamber = &chamber{w: w, climate: w.climate, low: t.Low.SI(), high: t.High.SI(), own: t.Ramp.SI(), setPoint: int16(10 * ambient),
 			hidden: hidden(d, t.Instrument, "chamber.temperature", stream(c.Seed, "chamber thermometer"))}
-		w.chamber.setPoint = int16(10 * ambient)
 	}
 	w.supply = newSupply(w, c.Seed)
 	site := newEarth(d.Site.Latitude.SI(), d.Site.Gravity.SI())
 	for i, s := range d.Slots {
-		setup, ok := c.Gyros[s.ID]
-		if !ok {
-			return nil, fmt.Errorf("slot %s: the virtual bench has no gyro for it", s.ID)
-		}
-		g, err := newGyro(c, setup, s)
+		g, err := c.gyro(s)
 		if err != nil {
 			return nil, fmt.Errorf("slot %s: %w", s.ID, err)
 		}
@@ -80,6 +70,24 @@ func New(c Config) (*World, error) {
 		g.begin(0)
 	}
 	return w, nil
+}
+
+// table makes the table and the frame of its true axis.
+func (c *Config) table(w *World, t *instruments.TableDescription) (*table, axes, error) {
+	if dot(t.Axis, t.Axis) == 0 {
+		return nil, axes{}, errors.New("the table's axis has no direction; give it as east, north, up")
+	}
+	maxRate, err := t.MaxRate.In(degPerS)
+	if err != nil {
+		return nil, axes{}, fmt.Errorf("the table's greatest rate: %w", err)
+	}
+	maxAccel, err := t.MaxAcceleration.In(degPerS2)
+	if err != nil {
+		return nil, axes{}, fmt.Errorf("the table's greatest acceleration: %w", err)
+	}
+	off := hidden(c.Description, t.Instrument, "table.rate", stream(c.Seed, "table rate"))
+	tilt := small(stream(c.Seed, "table axis"), t.AxisUncertainty.SI())
+	return newTable(w, c.Seed, maxRate, maxAccel, t.Creep.SI(), off), newAxes(t.Axis, tilt), nil
 }
 
 var (
@@ -103,18 +111,28 @@ func (w *World) connect(g *gyro, s instruments.SlotDescription, index int) error
 	return nil
 }
 
-func newGyro(c Config, setup Setup, s instruments.SlotDescription) (*gyro, error) {
-	population := setup.Custom
-	if population == nil {
-		text, ok := Shipped(setup.Population)
-		if !ok {
-			return nil, &UnknownError{What: "population", Name: setup.Population, Known: Populations()}
-		}
-		loaded, _, problems := LoadPopulation(setup.Population, text)
-		if err := problems.Err(); err != nil {
-			return nil, err
-		}
-		population = loaded
+// population is the one that a setup names or brings along.
+func (s *Setup) population() (*Population, error) {
+	if s.Custom != nil {
+		return s.Custom, nil
+	}
+	text, ok := Shipped(s.Population)
+	if !ok {
+		return nil, &UnknownError{What: "population", Name: s.Population, Known: Populations()}
+	}
+	population, _, problems := LoadPopulation(s.Population, text)
+	return population, problems.Err()
+}
+
+// gyro draws the gyro of one slot.
+func (c *Config) gyro(s instruments.SlotDescription) (*gyro, error) {
+	setup, ok := c.Gyros[s.ID]
+	if !ok {
+		return nil, errors.New("the virtual bench has no gyro for it")
+	}
+	population, err := setup.population()
+	if err != nil {
+		return nil, err
 	}
 	slot := string(s.ID)
 	p, err := population.draw(c.Seed, slot, setup.Overrides)
@@ -132,9 +150,6 @@ func newGyro(c Config, setup Setup, s instruments.SlotDescription) (*gyro, error
 		sigma: p.N * math.Sqrt(frameRate),
 	}
 	g.mech = mechanisms[population.Family](&g.p)
-	if c.Trace {
-		g.trace = &trace{}
-	}
 	return g, nil
 }
 

@@ -30,7 +30,8 @@ type bench struct {
 }
 
 func newBench(t testing.TB, seed uint64, d *instruments.Description, s Setup, volts string) *bench {
-	w := world(t, Config{Seed: seed, Description: d, Gyros: map[instruments.SlotID]Setup{"A": s}, Trace: true})
+	w := world(t, Config{Seed: seed, Description: d, Gyros: map[instruments.SlotID]Setup{"A": s}})
+	w.KeepTrace()
 	b := &bench{w, t, connect(t, w, "gyro-1"), connect(t, w, "table"), connect(t, w, "supply")}
 	for _, line := range []string{"VOLT " + volts + ",(@1)", "CURR 5,(@1)", "OUTP ON,(@1)"} {
 		say(t, b.supply, line)
@@ -330,6 +331,7 @@ func TestWorldsAreRefused(t *testing.T) {
 		change func(c *Config)
 		want   string
 	}{
+		"table in degrees":  {func(c *Config) { c.Description.Table.MaxRate = q(t, "400 deg") }, "greatest rate"},
 		"no description":    {func(c *Config) { c.Description = nil }, "needs a description"},
 		"no gyro":           {func(c *Config) { delete(c.Gyros, "B") }, "slot B: the virtual bench has no gyro"},
 		"population":        {func(c *Config) { c.Gyros["A"] = Setup{Population: "opticl"} }, `slot A: "opticl" is no population; did you mean "optical"?`},

@@ -84,7 +84,8 @@ func TestTableHidesItsRateError(t *testing.T) {
 		d := describe(t, 1)
 		d.Instruments = []instruments.InstrumentDescription{{Name: "T1", Calibrations: []instruments.Calibration{
 			{Reading: "table.rate", Correction: q(t, "40 ppm"), U: q(t, "20 ppm"), K: 2, Drift: q(t, "0 ppm")}}}}
-		w := world(t, Config{Seed: seed + 1, Description: d, Gyros: map[instruments.SlotID]Setup{"A": fixed(t, "optical")}, Trace: true})
+		w := world(t, Config{Seed: seed + 1, Description: d, Gyros: map[instruments.SlotID]Setup{"A": fixed(t, "optical")}})
+		w.KeepTrace()
 		truth := w.Truth("A")
 		if off := truth.TableShare - 40e-6; math.Abs(off) > 5*10e-6 || off == 0 {
 			t.Errorf("hidden error %v, want one within 50 ppm of the correction", truth.TableShare)
@@ -122,7 +123,8 @@ func TestTableHidesItsRateError(t *testing.T) {
 func TestTableCreepsAtHold(t *testing.T) {
 	d := describe(t, 1)
 	d.Table.Creep = q(t, "1e-4 deg/s")
-	w := world(t, Config{Seed: 1, Description: d, Gyros: map[instruments.SlotID]Setup{"A": fixed(t, "optical")}, Trace: true})
+	w := world(t, Config{Seed: 1, Description: d, Gyros: map[instruments.SlotID]Setup{"A": fixed(t, "optical")}})
+	w.KeepTrace()
 	powered(t, w, "5", 1)
 	l := connect(t, w, "table")
 	seen := map[float64]bool{}

@@ -26,6 +26,17 @@ type Truth struct {
 	trace *trace
 }
 
+// KeepTrace makes the world keep what Truth.Window needs, some bytes a frame. It is for rehearsal and tests, before any
+// gyro is switched on.
+func (w *World) KeepTrace() {
+	for _, g := range w.gyros {
+		if g.on {
+			panic(fmt.Sprintf("virtual: a trace of slot %s is asked for while its gyro is on", g.slot))
+		}
+		g.trace = &trace{}
+	}
+}
+
 // Truth of the gyro in a slot; nil where there is none.
 func (w *World) Truth(slot instruments.SlotID) *Truth {
 	for _, g := range w.gyros {
@@ -42,7 +53,7 @@ func (w *World) Truth(slot instruments.SlotID) *Truth {
 	return nil
 }
 
-// Window is what a stretch of samples was without white noise and rounding: means in rad/s.
+// Window is what a stretch of samples was without white noise, rounding, dead band and saturation: means in rad/s.
 type Window struct {
 	From, To      time.Time
 	Input         float64 // true rate about the input axis, the Earth's included
@@ -66,7 +77,7 @@ func (e *NoTraceError) Error() string { return "no truth of these samples: " + e
 // at start, to within half the shortest time between two power-ons.
 func (t *Truth) Window(start time.Time, first uint64, n int) (Window, error) {
 	if t.trace == nil {
-		return Window{}, &NoTraceError{"the world was made without Config.Trace"}
+		return Window{}, &NoTraceError{"World.KeepTrace was not called"}
 	}
 	t.world.catchUp()
 	on := int64(start.Sub(began)) - int64(first)*framePeriodNs

@@ -81,7 +81,8 @@ func TestNoTruthWithoutTrace(t *testing.T) {
 	if _, err := w.Truth("A").Window(began, 0, 1); err == nil {
 		t.Error("no error")
 	}
-	w = world(t, Config{Seed: 1, Description: describe(t, 1), Gyros: map[instruments.SlotID]Setup{"A": fixed(t, "optical")}, Trace: true})
+	w = world(t, Config{Seed: 1, Description: describe(t, 1), Gyros: map[instruments.SlotID]Setup{"A": fixed(t, "optical")}})
+	w.KeepTrace()
 	if _, err := w.Truth("A").Window(began, 0, 1); err == nil {
 		t.Error("no error from a gyro that was never on")
 	}

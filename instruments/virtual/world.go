@@ -17,7 +17,6 @@ func moment(ns int64) time.Time { return began.Add(time.Duration(ns)) }
 
 // World is a virtual bench. It is a link.Pacer: time stands still but for Sleep and Advance.
 type World struct {
-	seed    uint64
 	now     int64 // ns since the start
 	tick    int64 // the next bench second
 	due     events

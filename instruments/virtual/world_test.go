@@ -207,6 +207,35 @@ func TestBytesDoNotDependOnSlices(t *testing.T) {
 	}
 }
 
+// TestSeedsAndNeighbours: a seed gives its own bytes, again and again, whoever sits in the other slots.
+func TestSeedsAndNeighbours(t *testing.T) {
+	run := func(seed uint64, slots int, late bool) []byte {
+		w := world(t, Config{Seed: seed, Description: describe(t, slots), Gyros: map[instruments.SlotID]Setup{
+			"A": fixed(t, "optical"), "B": fixed(t, "vibratory"), "C": fixed(t, "optical-angle")}})
+		g := connect(t, w, "gyro-1")
+		powered(t, w, "5", slots)
+		sleep(t, w, 5*time.Second)
+		if late {
+			g = connect(t, w, "gyro-1")
+		}
+		return take(g)
+	}
+	if got := run(1, 1, true); len(got) != 0 {
+		t.Errorf("%d bytes from before the link was there", len(got))
+	}
+	one := func(seed uint64, slots int) []byte { return run(seed, slots, false) }
+	first := one(1, 1)
+	if len(decode(t, first)) != 499 {
+		t.Fatalf("%d bytes", len(first))
+	}
+	if !bytes.Equal(first, one(1, 1)) || !bytes.Equal(first, one(1, 3)) {
+		t.Error("one seed, other bytes")
+	}
+	if bytes.Equal(first, one(2, 1)) {
+		t.Error("two seeds, the same bytes")
+	}
+}
+
 func TestSleepEndsWithItsContext(t *testing.T) {
 	w := world(t, Config{Seed: 1, Description: describe(t, 1), Gyros: map[instruments.SlotID]Setup{"A": fixed(t, "optical")}})
 	stopped := errors.New("operator")
