@@ -298,6 +298,7 @@ func (e *evaluator) reduce(ctx context.Context, f *Figure, element ElementSpec, 
 		}
 		in.Recordings = append(in.Recordings, rec)
 	}
+	in.Noise = e.noise(f.noise, element.Labels)
 	if f.scaleFactor != "" {
 		sf := leanOn(figures, f.scaleFactor, element.Labels)
 		if sf == nil || sf.Void != "" {
@@ -314,6 +315,28 @@ func (e *evaluator) reduce(ctx context.Context, f *Figure, element ElementSpec, 
 		panic(fmt.Sprintf("procedures: method %s answers in %v, figure %s is planned in %s", f.Method.Name, err, f.Name, f.Unit))
 	}
 	return got
+}
+
+// noise finds the recordings from which an element's noise is taken: those made at the element's own labels first, then
+// any other, complete ones only.
+func (e *evaluator) noise(name string, labels recording.Labels) []*recording.Recording {
+	var own, others []*recording.Recording
+	for _, r := range e.recs {
+		if name == "" || r.Name != name || !r.Quality.Complete {
+			continue
+		}
+		fits := true
+		for _, l := range r.Labels {
+			want, ok := labels.Find(l.Name)
+			fits = fits && (!ok || want.Value.Same(l.Value) && (want.Visit == 0 || want.Visit == l.Visit))
+		}
+		if fits {
+			own = append(own, r)
+		} else {
+			others = append(others, r)
+		}
+	}
+	return append(own, others...)
 }
 
 func missingReason(x expected) string { return describe(x) + " was not made" }

@@ -117,11 +117,32 @@ func (p *planner) reduced(f *Figure, m document.Map, figures []string) {
 		p.add(m.ValueSpan("scale-factor"), "unknown-figure", source.DidYouMean(f.scaleFactor, figures), "unknown figure %q", f.scaleFactor)
 		f.scaleFactor = ""
 	}
+	p.noise(f, m)
 	if !m.Has("of") {
 		p.add(f.Span, "missing-key", "name the recordings it is reduced from", "figure %s needs the key \"of\"", f.Name)
 		return
 	}
 	p.elements(f, m)
+}
+
+// noise checks the recording that a figure's noise is taken from: without one, its uncertainty could not be told.
+func (p *planner) noise(f *Figure, m document.Map) {
+	f.noise = m.Text("noise")
+	if !slices.Contains(f.Method.Options, "noise") {
+		return
+	}
+	if !m.Has("noise") {
+		p.add(f.Span, "missing-key", "state noise: with the name of a recording at rest", "figure %s needs a recording at rest from which the gyro's noise is taken", f.Name)
+		return
+	}
+	var names []string
+	for _, e := range p.plan.expected {
+		if e.name == f.noise {
+			return
+		}
+		names = append(names, e.name)
+	}
+	p.add(m.ValueSpan("noise"), "no-recording", source.DidYouMean(f.noise, names), "no step makes a recording %q", f.noise)
 }
 
 // selector is one label of `per`, with whether its visits are told apart.

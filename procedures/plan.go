@@ -155,6 +155,7 @@ type Figure struct {
 
 	options     reduce.Options
 	scaleFactor string // figure
+	noise       string // recording
 	formula     *limits.Formula
 	labels      []string // that index the series
 	recordings  []string // names of those it is reduced from

@@ -128,7 +128,7 @@ func (p *planner) boundedFigure(l *Limit, m document.Map, names []string) {
 	}
 	if !m.Has("per") {
 		l.Require = fmt.Sprintf("%s %s %s", name, strings.ReplaceAll(key, "-", " "), node.Text())
-		p.part(l, f, key, node, at)
+		p.boundPart(l, f, key, node, at)
 		return
 	}
 	p.boundsPer(l, f, m, key, node, at)
@@ -165,7 +165,7 @@ func (p *planner) boundsPer(l *Limit, f *Figure, m document.Map, key string, nod
 			}
 		}
 		said = append(said, fmt.Sprintf("%s at %s", e.Value.Text(), v))
-		p.part(l, f, key, e.Value, c)
+		p.boundPart(l, f, key, e.Value, c)
 	}
 	for _, element := range f.Elements {
 		inside := !slices.ContainsFunc(at, func(c condition) bool { return !c.fits(element.Labels) })
@@ -178,7 +178,7 @@ func (p *planner) boundsPer(l *Limit, f *Figure, m document.Map, key string, nod
 }
 
 // part adds bounds for the elements that fit.
-func (p *planner) part(l *Limit, f *Figure, key string, node *document.Node, at []condition) {
+func (p *planner) boundPart(l *Limit, f *Figure, key string, node *document.Node, at []condition) {
 	if node.Form != document.Scalar {
 		p.add(node.Span, "wrong-value", "", "%s: a bound with its unit was expected, this is %s", key, node.Form)
 		return

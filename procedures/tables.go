@@ -125,6 +125,7 @@ var figureTable = document.Table{
 		{Name: "unit", Kind: document.Text, Doc: "unit of measure; of a ratio, ppm or %"},
 		{Name: "measurand", Kind: document.Choice, Choices: []string{"sample", "population"}, Doc: "the statistic of these samples, or the gyro's parameter behind them"},
 		{Name: "scale-factor", Kind: document.Name, Doc: "figure with the measured scale-factor error, for the part of Earth rate"},
+		{Name: "noise", Kind: document.Name, Doc: "recording at rest from which the gyro's noise is taken"},
 		{Name: "tau", Kind: document.Quantity, Dimension: document.Dim(quantity.Time), Doc: "averaging time"},
 		{Name: "relative-to", Kind: document.Choice, Choices: []string{"range", "reading"}, Doc: "what a nonlinearity is a part of"},
 		{Name: "least", Kind: document.Quantity, Dimension: document.Dim(quantity.AngularRate), Doc: "rates below it are left out of a nonlinearity relative to reading"},

@@ -41,8 +41,8 @@ type Measured struct {
 	Family        Family
 	Budget        []Line
 	Scale, Shift  float64   // chi: the raw deviation s, and the variance w^2 that noise alone makes of it
-	Draws         []float64 // sample: the propagated draws, sorted
-	Upper         bool      // bound: the truth lies at or below Value's interval; it can meet an upper limit, never miss one
+	Draws         []float64 // sample, and bounds found by propagation: the draws, sorted
+	Upper         bool      // bound: the truth lies at or below High; it can meet an upper limit, never miss one
 	Void          string    // why it was not measured; every number is NaN then
 }
 
@@ -142,8 +142,10 @@ func (m Measured) CDF(x float64) float64 {
 			return 0
 		}
 		return distuv.ChiSquared{K: m.DoF}.Survival(m.DoF * m.Scale * m.Scale / bound)
-	case m.Family == Sampled:
+	case len(m.Draws) > 0:
 		return m.sampledCDF(x)
+	case m.Family == Bound: // half a normal distribution from zero
+		return math.Max(0, 2*distuv.UnitNormal.CDF(x/m.U)-1)
 	case m.U == 0:
 		if x < m.Value {
 			return 0
@@ -164,8 +166,10 @@ func (m Measured) Quantile(p float64) float64 {
 		}
 		chi2 := chiQuantile(1-p, m.DoF)
 		return math.Sqrt(math.Max(m.DoF*m.Scale*m.Scale/chi2-m.Shift, 0))
-	case m.Family == Sampled:
+	case len(m.Draws) > 0:
 		return m.sampledQuantile(p)
+	case m.Family == Bound:
+		return m.U * normalQuantile(0.5+p/2)
 	case m.U == 0:
 		return m.Value
 	}

@@ -1,0 +1,119 @@
+package reduce
+
+import (
+	"context"
+	"math"
+	"math/rand/v2"
+
+	"gonum.org/v1/gonum/mat"
+
+	"proofrate/limits/quantity"
+)
+
+// tableLine is the part of the table's calibration in a relative scale factor: shared by all gyros of the run.
+func (m *measuredSweep) tableLine(slope float64) quantity.Line {
+	return quantity.Line{Name: "rate of the table", Instrument: m.bench.Instrument + " table.rate", Value: 1, U: m.bench.TableRate.U,
+		Sensitivity: -slope, Contribution: math.Abs(slope) * m.bench.TableRate.U, DoF: math.Inf(1)}
+}
+
+// linear makes the method of a figure that is smooth in the outputs.
+func linear(figure func(Sweep) float64, ofTable bool) func(context.Context, Input) quantity.Measured {
+	return func(_ context.Context, in Input) quantity.Measured {
+		m, reason := sweepOf(in)
+		if m == nil {
+			return quantity.Voided(ratio, reason)
+		}
+		budget := m.parts(m.gradient(figure))
+		if ofTable {
+			budget = append(budget, m.tableLine(m.Line().Slope))
+		}
+		return quantity.T(figure(m.Sweep), ratio, budget)
+	}
+}
+
+// The methods whose figure is smooth in the outputs. Budget: white and slow noise of the gyro, reading of the table's
+// rate, centripetal acceleration; scale factor and its error: the table's calibration too, which the others do not feel.
+var (
+	scaleFactor      = linear(func(s Sweep) float64 { return s.Line().Slope }, true)
+	scaleFactorError = linear(Sweep.Error, true)
+	asymmetry        = linear(Sweep.Asymmetry, false)
+)
+
+func nonlinearity(_ context.Context, in Input) quantity.Measured {
+	ofReading := in.Options.Relative == "reading"
+	return largest(in, func(s Sweep) float64 { return s.Nonlinearity(in.Gyro.Range, ofReading, in.Options.Least) })
+}
+
+func hysteresis(_ context.Context, in Input) quantity.Measured {
+	return largest(in, func(s Sweep) float64 { return s.Hysteresis(in.Gyro.Range) })
+}
+
+// largestDraws carry the distribution of a figure that is the largest of several.
+const largestDraws = 2000
+
+// largest measures a figure that is the largest of several noisy residuals, and so biased high.
+//
+// Draws of the outputs' noise e, from its covariance, are taken off the measured outputs: f(y - e) is spread as the
+// truth is, but higher once more by what noise makes. That amount, mean f(y - e) - f(y), is taken off twice: once for
+// the draws, once for the measured value. No draw goes below zero. The budget names the noise's share.
+func largest(in Input, figure func(Sweep) float64) quantity.Measured {
+	m, reason := sweepOf(in)
+	if m == nil {
+		return quantity.Voided(ratio, reason)
+	}
+	measured := figure(m.Sweep)
+	if math.IsNaN(measured) {
+		return quantity.Voided(ratio, "no rate was come to from both sides; a full traverse is needed (0, +, 0, -, 0, +)")
+	}
+	root := factor(m.covariance())
+	random := rand.New(rand.NewPCG(m.seed, largestStream))
+	n := len(m.Sweep)
+	z := make([]float64, n)
+	moved := make(Sweep, n)
+	draws := make([]float64, largestDraws)
+	mean := 0.0
+	for d := range draws {
+		for i := range z {
+			z[i] = random.NormFloat64()
+		}
+		for i := range n {
+			e := 0.0
+			for j := 0; j <= i; j++ {
+				e += root.At(i, j) * z[j]
+			}
+			moved[i] = m.Sweep[i]
+			moved[i].Output -= e
+		}
+		draws[d] = figure(moved)
+		mean += draws[d] / largestDraws
+	}
+	excess := math.Max(mean-measured, 0)
+	for d := range draws {
+		draws[d] = math.Max(draws[d]-2*excess, 0)
+	}
+	result := quantity.Sample(draws, math.Max(measured-excess, 0), ratio, nil)
+	result.Budget = []quantity.Line{{Name: "noise and reading", Value: excess, U: result.U, Sensitivity: 1, Contribution: result.U, DoF: math.Inf(1)}}
+	return result
+}
+
+const largestStream = 0x6c617267657374 // "largest"
+
+// factor is the Cholesky factor of a covariance, with as much on its diagonal as rounding asks for.
+func factor(c [][]float64) *mat.TriDense {
+	n := len(c)
+	for jitter := 1e-12; ; jitter *= 10 {
+		sym := mat.NewSymDense(n, nil)
+		for i := range n {
+			for j := i; j < n; j++ {
+				sym.SetSym(i, j, c[i][j])
+			}
+			sym.SetSym(i, i, c[i][i]*(1+jitter))
+		}
+		var cholesky mat.Cholesky
+		if cholesky.Factorize(sym) {
+			lower := mat.NewTriDense(n, mat.Lower, nil)
+			cholesky.LTo(lower)
+			return lower
+		}
+	}
+}
