@@ -54,16 +54,12 @@ var crcAt = func() (table [frameBody][256]uint16) {
 // crcOfZeros is the CRC of a body of zeros.
 var crcOfZeros = crcFrom(0xffff, make([]byte, frameBody))
 
-// appendFrame encodes one frame.
-func appendFrame(out []byte, counter uint16, count int32, temperature int16, status uint16) []byte {
-	var f [frameSize]byte
-	f[0], f[1] = 0xa5, 0x5a
-	binary.BigEndian.PutUint16(f[2:], counter)
-	binary.BigEndian.PutUint32(f[4:], uint32(count))
-	binary.BigEndian.PutUint16(f[8:], uint16(temperature))
-	binary.BigEndian.PutUint16(f[10:], status)
+// putFrame encodes one frame into the first frameSize bytes of f.
+func putFrame(f []byte, counter uint16, count int32, temperature int16, status uint16) {
+	f = f[:frameSize]
+	binary.BigEndian.PutUint64(f, 0xa55a<<48|uint64(counter)<<32|uint64(uint32(count)))
+	binary.BigEndian.PutUint32(f[8:], uint32(uint16(temperature))<<16|uint32(status))
 	crc := crcOfZeros ^ crcAt[0][f[2]] ^ crcAt[1][f[3]] ^ crcAt[2][f[4]] ^ crcAt[3][f[5]] ^ crcAt[4][f[6]] ^
 		crcAt[5][f[7]] ^ crcAt[6][f[8]] ^ crcAt[7][f[9]] ^ crcAt[8][f[10]] ^ crcAt[9][f[11]]
 	binary.BigEndian.PutUint16(f[12:], crc)
-	return append(out, f[:]...)
 }

@@ -22,7 +22,9 @@ func TestFrameChecksum(t *testing.T) {
 	r := rand.New(rand.NewPCG(1, 1))
 	for range 1000 {
 		counter, count, temperature, status := uint16(r.Uint32()), int32(r.Uint32()), int16(r.Uint32()), uint16(r.Uint32())
-		frames := decode(t, appendFrame(nil, counter, count, temperature, status)) // checks the CRC bit by bit
+		f := make([]byte, frameSize)
+		putFrame(f, counter, count, temperature, status)
+		frames := decode(t, f) // checks the CRC bit by bit
 		if got, want := frames[0], (frame{counter, count, temperature, status}); got != want {
 			t.Fatalf("%+v, want %+v", got, want)
 		}

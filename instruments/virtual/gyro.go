@@ -3,6 +3,7 @@ package virtual
 import (
 	"math"
 	"math/rand/v2"
+	"slices"
 	"time"
 
 	"proofrate/instruments"
@@ -160,13 +161,13 @@ func (g *gyro) produce(now int64) {
 	if len(g.out) == 0 || g.device == nil {
 		return
 	}
-	arrival := g.frameEnd(g.frames-1) + frameOnLine
+	arrived, arrival := g.out, g.frameEnd(g.frames-1)+frameOnLine
 	if arrival > now { // the newest is still on the line
 		before := len(g.out) - frameSize
 		g.device.Deliver(g.out[:before], moment(arrival-framePeriodNs))
-		g.out = g.out[before:]
+		arrived = g.out[before:]
 	}
-	g.device.Deliver(g.out, moment(arrival))
+	g.device.Deliver(arrived, moment(arrival))
 }
 
 // next is when the next frame will have arrived.
@@ -236,6 +237,8 @@ func (g *gyro) finish(end int64, y []float64) {
 	g.white.next += len(y)
 	starting := g.mech.validFrom() - end // ns
 	limit := g.p.Saturation * g.p.Range
+	sent := len(g.out)
+	g.out = slices.Grow(g.out, len(y)*frameSize)[:sent+len(y)*frameSize]
 	for i := range y {
 		slow := g.slow.at(fraction + float64(i)*framePeriod)
 		if g.trace != nil {
@@ -254,7 +257,7 @@ func (g *gyro) finish(end int64, y []float64) {
 			v = math.Copysign(limit, v)
 			status |= statusSaturated
 		}
-		g.out = appendFrame(g.out, uint16(g.frames), g.round(v*g.p.Polarity), g.temperature, status)
+		putFrame(g.out[sent+i*frameSize:], uint16(g.frames), g.round(v*g.p.Polarity), g.temperature, status)
 		g.frames++
 	}
 }

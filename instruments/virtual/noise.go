@@ -91,9 +91,9 @@ func (n *slowNoise) advance() {
 
 // add puts a straight line on width levels, of which it reaches the end at the one after.
 func (n *slowNoise) add(first, width int, from, to float64) {
-	slope := (to - from) / float64(width)
-	for i := range n.level[first : first+width] {
-		n.level[first+i] += from + slope*float64(i)
+	level, slope := n.level[first:first+width], (to-from)/float64(width)
+	for i := range level {
+		level[i] += from + slope*float64(i)
 	}
 }
 

@@ -269,3 +269,27 @@ func BenchmarkFrames(b *testing.B) {
 		})
 	}
 }
+
+// BenchmarkDay is a day of bench time with four gyros at rest, their links emptied every second: the virtual bench's
+// share of a long acceptance.
+func BenchmarkDay(b *testing.B) {
+	for b.Loop() {
+		gyros := map[instruments.SlotID]Setup{}
+		for _, slot := range []instruments.SlotID{"A", "B", "C", "D"} {
+			gyros[slot] = fixed(b, "optical")
+		}
+		w := world(b, Config{Seed: 1, Description: describe(b, 4), Gyros: gyros})
+		powered(b, w, "5", 4)
+		var links []link.Link
+		for i := range 4 {
+			links = append(links, connect(b, w, fmt.Sprintf("gyro-%d", i+1)))
+		}
+		for range 24 * 3600 {
+			sleep(b, w, time.Second)
+			for _, l := range links {
+				l.Discard(len(l.Peek()))
+			}
+		}
+	}
+	b.ReportMetric(float64(b.N)*24*3600*100*4/b.Elapsed().Seconds(), "frames/s")
+}
