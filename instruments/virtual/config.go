@@ -50,6 +50,9 @@ func New(c Config) (*World, error) {
 		servo = w.table.servo
 	}
 	if t := d.Chamber; t != nil {
+		if t.Ramp.Dimension() != quantity.TemperatureRate || t.Ramp.Number <= 0 {
+			return nil, fmt.Errorf("the chamber's ramp is %s; it is a positive temperature rate, such as 2 K/min", t.Ramp)
+		}
 		w.chamber = &chamber{w: w, climate: w.climate, low: t.Low.SI(), high: t.High.SI(), own: t.Ramp.SI(), setPoint: int16(10 * ambient),
 			hidden: hidden(d, t.Instrument, "chamber.temperature", stream(c.Seed, "chamber thermometer"))}
 	}

@@ -8,6 +8,7 @@ import (
 
 	"proofrate/instruments"
 	"proofrate/instruments/link"
+	"proofrate/limits/quantity"
 )
 
 // quiet overrides leave a gyro with next to no noise and none of the optional effects, so that a test can set one.
@@ -332,6 +333,7 @@ func TestWorldsAreRefused(t *testing.T) {
 		want   string
 	}{
 		"table in degrees":  {func(c *Config) { c.Description.Table.MaxRate = q(t, "400 deg") }, "greatest rate"},
+		"no ramp":           {func(c *Config) { c.Description.Chamber.Ramp = quantity.Value{} }, "the chamber's ramp is 0"},
 		"no description":    {func(c *Config) { c.Description = nil }, "needs a description"},
 		"no gyro":           {func(c *Config) { delete(c.Gyros, "B") }, "slot B: the virtual bench has no gyro"},
 		"population":        {func(c *Config) { c.Gyros["A"] = Setup{Population: "opticl"} }, `slot A: "opticl" is no population; did you mean "optical"?`},

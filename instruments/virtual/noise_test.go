@@ -58,7 +58,7 @@ func exactDeviation(b, k float64, tausS []int) []float64 {
 	return deviation
 }
 
-// TestSynthesisHasItsClosedForm: METROLOGY asks for 0.5 %. Interpolation between the steps of the fast stages costs
+// TestSynthesisHasItsClosedForm: within 0.5 %. Interpolation between the steps of the fast stages costs
 // most at the shortest averaging times.
 func TestSynthesisHasItsClosedForm(t *testing.T) {
 	taus := []int{1, 3, 10, 30, 100, 300}
