@@ -23,7 +23,6 @@ type Config struct {
 // Setup is the gyro in one slot.
 type Setup struct {
 	Population string                    // a shipped one
-	Custom     *Population               // instead of it
 	Overrides  map[string]quantity.Value // parameters that are set, not drawn
 }
 
@@ -114,11 +113,7 @@ func (w *World) connect(g *gyro, s instruments.SlotDescription, index int) error
 	return nil
 }
 
-// population is the one that a setup names or brings along.
 func (s *Setup) population() (*Population, error) {
-	if s.Custom != nil {
-		return s.Custom, nil
-	}
 	text, ok := Shipped(s.Population)
 	if !ok {
 		return nil, &UnknownError{What: "population", Name: s.Population, Known: Populations()}
