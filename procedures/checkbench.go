@@ -16,46 +16,49 @@ func (p *Plan) CheckBench(d *instruments.Description) source.List {
 	c := benchCheck{plan: p, bench: d}
 	c.table()
 	c.chamber()
+	c.slots()
 	for _, s := range d.Slots {
 		c.slot(s)
 	}
 	c.readings()
-	c.problems.Sort()
-	return c.problems
+	c.list.Sort()
+	return c.list
 }
 
 type benchCheck struct {
-	plan     *Plan
-	bench    *instruments.Description
-	problems source.List
+	findings
+	plan  *Plan
+	bench *instruments.Description
 }
 
-func (c *benchCheck) add(span source.Span, format string, args ...any) {
-	c.problems.Addf(span, "bench-cannot", "", "bench "+c.bench.Name+" "+format, args...)
+func (c *benchCheck) cannot(span source.Span, format string, args ...any) {
+	c.add(span, "bench-cannot", "", "bench "+c.bench.Name+" "+format, args...)
 }
 
-// needs is the place where a procedure states what it needs.
-func (c *benchCheck) needs() source.Span {
-	if i := strings.Index(string(c.plan.File.Text), "\nneeds:"); i >= 0 {
-		return c.plan.File.Span(i+1, i+6)
-	}
-	return c.plan.File.Span(0, 1)
-}
+// needs is the place where a procedure states what it needs, gyro where it states the gyro.
+func (c *benchCheck) needs() source.Span { return c.plan.places["needs"] }
+func (c *benchCheck) gyro() source.Span  { return c.plan.places["gyro"] }
 
 func (c *benchCheck) table() {
 	t := c.bench.Table
 	if c.plan.Needs.Table {
 		switch {
 		case t == nil:
-			c.add(c.needs(), "has no table; the procedure needs one of %s", c.plan.Needs.TableRate)
+			c.cannot(c.needs(), "has no table; the procedure needs one of %s", c.plan.Needs.TableRate)
 		case c.plan.Needs.TableRate.SI() > t.MaxRate.SI():
-			c.add(c.needs(), "turns at %s at most; the procedure needs %s", t.MaxRate, c.plan.Needs.TableRate)
+			c.cannot(c.needs(), "turns at %s at most; the procedure needs %s", t.MaxRate, c.plan.Needs.TableRate)
 		}
 	}
-	p := c.plan
-	p.walk(p.Steps, func(s Step) {
-		if _, ok := s.Action.(Position); ok && (t == nil || !t.CanPosition) {
-			c.add(s.Span, "has no table that can go to a position")
+	c.plan.walk(c.plan.Steps, func(s Step) {
+		switch s.Action.(type) {
+		case Position:
+			if t == nil || !t.CanPosition {
+				c.cannot(s.Span, "has no table that can go to a position")
+			}
+		case Hold:
+			if t == nil {
+				c.cannot(s.Span, "has no table to hold")
+			}
 		}
 	})
 }
@@ -68,39 +71,48 @@ func (c *benchCheck) chamber() {
 	ch := c.bench.Chamber
 	switch {
 	case ch == nil:
-		c.add(c.needs(), "has no chamber; the procedure needs one from %s to %s", n.ChamberLow, n.ChamberHigh)
+		c.cannot(c.needs(), "has no chamber; the procedure needs one from %s to %s", n.ChamberLow, n.ChamberHigh)
 	case n.ChamberLow.SI() < ch.Low.SI() || n.ChamberHigh.SI() > ch.High.SI():
-		c.add(c.needs(), "has a chamber from %s to %s; the procedure needs %s to %s", ch.Low, ch.High, n.ChamberLow, n.ChamberHigh)
+		c.cannot(c.needs(), "has a chamber from %s to %s; the procedure needs %s to %s", ch.Low, ch.High, n.ChamberLow, n.ChamberHigh)
 	}
+}
+
+// slots checks that the steps name slots that there are.
+func (c *benchCheck) slots() {
+	var names []string
+	for _, s := range c.bench.Slots {
+		names = append(names, string(s.ID))
+	}
+	if len(names) == 0 {
+		c.cannot(c.needs(), "has no slot")
+	}
+	c.plan.walk(c.plan.Steps, func(s Step) {
+		if power, ok := s.Action.(Power); ok && power.Slot != "" && !slices.Contains(names, string(power.Slot)) {
+			c.add(s.Span, "bench-cannot", source.DidYouMean(string(power.Slot), names), "bench %s has no slot %q", c.bench.Name, power.Slot)
+		}
+	})
 }
 
 func (c *benchCheck) slot(s instruments.SlotDescription) {
 	p := c.plan
 	if s.Supply == "" {
-		c.add(c.needs(), "gives slot %s no supply", s.ID)
+		c.cannot(c.needs(), "gives slot %s no supply", s.ID)
 	}
 	if s.MaxVoltage.Number != 0 && p.Needs.Voltage.SI() > s.MaxVoltage.SI() {
-		c.add(c.needs(), "gives slot %s %s at most; the procedure needs %s", s.ID, s.MaxVoltage, p.Needs.Voltage)
+		c.cannot(c.needs(), "gives slot %s %s at most; the procedure needs %s", s.ID, s.MaxVoltage, p.Needs.Voltage)
 	}
 	if s.MaxCurrent.Number != 0 && p.Needs.Current.SI() > s.MaxCurrent.SI() {
-		c.add(c.needs(), "gives slot %s %s at most; the procedure needs %s", s.ID, s.MaxCurrent, p.Needs.Current)
+		c.cannot(c.needs(), "gives slot %s %s at most; the procedure needs %s", s.ID, s.MaxCurrent, p.Needs.Current)
 	}
 	if len(s.Channels) == 0 {
 		return
 	}
 	if s.SampleRate.Number != 0 && !s.SampleRate.Same(p.Gyro.SampleRate) {
-		c.add(c.gyro(), "reads slot %s at %s; the procedure expects %s", s.ID, s.SampleRate, p.Gyro.SampleRate)
+		c.cannot(c.gyro(), "reads slot %s at %s; the procedure expects %s", s.ID, s.SampleRate, p.Gyro.SampleRate)
 	}
 	if !slices.ContainsFunc(s.Channels, func(ch instruments.Channel) bool { return ch.Name == p.Gyro.Output }) {
-		c.add(c.gyro(), "reads %q in slot %s; the procedure expects %s", s.Channels[0].Name, s.ID, p.Gyro.Output)
+		c.cannot(c.gyro(), "reads %q in slot %s; the procedure expects %s", s.Channels[0].Name, s.ID, p.Gyro.Output)
 	}
-}
-
-func (c *benchCheck) gyro() source.Span {
-	if i := strings.Index(string(c.plan.File.Text), "\ngyro:"); i >= 0 {
-		return c.plan.File.Span(i+1, i+5)
-	}
-	return c.plan.File.Span(0, 1)
 }
 
 // readings checks that guards and settling steps name what the bench can read.
@@ -110,12 +122,12 @@ func (c *benchCheck) readings() {
 		switch {
 		case kind.Bench && strings.HasPrefix(name, "table.") && c.bench.Table == nil,
 			kind.Bench && strings.HasPrefix(name, "chamber.") && c.bench.Chamber == nil:
-			c.add(span, "has no %s", name)
+			c.cannot(span, "has no %s", name)
 		case kind.Bench:
 		default:
 			for _, s := range c.bench.Slots {
 				if !slices.Contains(s.Readings, name) {
-					c.add(span, "cannot read %s in slot %s; it reads %s there", name, s.ID, strings.Join(s.Readings, ", "))
+					c.cannot(span, "cannot read %s in slot %s; it reads %s there", name, s.ID, strings.Join(s.Readings, ", "))
 				}
 			}
 		}

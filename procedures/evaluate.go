@@ -7,6 +7,7 @@ import (
 	"hash/fnv"
 	"math"
 	"runtime"
+	"slices"
 	"sync"
 
 	"proofrate/instruments"
@@ -32,10 +33,12 @@ type FigureElement struct {
 	Recordings []int  // that it was reduced from: indices into those given
 }
 
-// Judgement is what a limit came to for one element.
+// Judgement is what a limit came to for one element. Its Labels are those of the element; none where the limit is
+// judged once.
 type Judgement struct {
 	Clause, Require, Rule string
 	EndsTrial             bool
+	Labels                recording.Labels
 	limits.Judgement
 }
 
@@ -184,7 +187,7 @@ func (e *evaluator) ready(name string) bool {
 	e.plan.lean(name, wanted)
 	for f := range wanted {
 		for _, element := range e.plan.figure(f).Elements {
-			for _, i := range element.recordings {
+			for _, i := range element.all() {
 				if e.at[i] < 0 {
 					return false
 				}
@@ -194,179 +197,161 @@ func (e *evaluator) ready(name string) bool {
 	return true
 }
 
-// figures evaluates the wanted figures (nil: all): first those that lean on nothing, then those that name a scale
-// factor, then formulas in the order of the document. Within a pass each element is a task of its own; its result has
-// its own place, so the order in which processors finish does not matter.
+// all are the recordings that an element leans on, the one for the noise last.
+func (s ElementSpec) all() []int {
+	if s.noise == none {
+		return s.recordings
+	}
+	return append(slices.Clone(s.recordings), s.noise)
+}
+
+// task is one element to evaluate.
+type task struct {
+	figure *Figure
+	spec   ElementSpec
+	got    FigureElement
+}
+
+// figures evaluates the wanted figures (nil: all), in the order of the plan: first those that lean on nothing, then
+// those that name a scale factor, then formulas one after the other. Within a pass each element is a task of its own;
+// its result has its own place, so the order in which processors finish does not matter.
 func (e *evaluator) figures(ctx context.Context, wanted map[string]bool) ([]FigureElement, error) {
-	var list []FigureElement
-	var owner []*Figure
+	var tasks []*task
+	var plain, leaning []*task
 	for i := range e.plan.Figures {
 		f := &e.plan.Figures[i]
 		if wanted != nil && !wanted[f.Name] {
 			continue
 		}
-		for _, element := range f.Elements {
-			one := FigureElement{Name: f.Name, Labels: element.Labels, Method: f.Method.Name}
-			if f.formula != nil {
-				one.Method = "formula"
-			}
-			for _, r := range element.recordings {
+		for _, spec := range f.Elements {
+			t := &task{figure: f, spec: spec, got: FigureElement{Name: f.Name, Labels: spec.Labels, Method: f.Method.Name}}
+			for _, r := range spec.recordings {
 				if e.at[r] >= 0 {
-					one.Recordings = append(one.Recordings, e.at[r])
+					t.got.Recordings = append(t.got.Recordings, e.at[r])
 				}
 			}
-			list, owner = append(list, one), append(owner, f)
+			tasks = append(tasks, t)
+			switch {
+			case f.formula != nil:
+				t.got.Method = "formula"
+			case f.scaleFactor != "":
+				leaning = append(leaning, t)
+			default:
+				plain = append(plain, t)
+			}
 		}
 	}
-	var plain, leaning []int
-	for i, f := range owner {
-		switch {
-		case f.formula != nil:
-		case f.scaleFactor != "":
-			leaning = append(leaning, i)
-		default:
-			plain = append(plain, i)
-		}
-	}
-	specs := make([]ElementSpec, 0, len(list))
-	for _, f := range unique(owner) {
-		specs = append(specs, f.Elements...)
-	}
-	for _, pass := range [][]int{plain, leaning} {
-		if err := parallel(ctx, pass, func(i int) { list[i].Measured = e.reduce(ctx, owner[i], specs[i], list) }); err != nil {
+	for _, pass := range [][]*task{plain, leaning} {
+		done := results(tasks)
+		if err := parallel(ctx, pass, func(t *task) { t.got.Measured = e.reduce(ctx, t, done) }); err != nil {
 			return nil, err
 		}
 	}
-	for _, f := range unique(owner) {
-		if f.formula == nil {
-			continue
+	for i, t := range tasks {
+		if t.figure.formula == nil || i > 0 && tasks[i-1].figure == t.figure {
+			continue // a series' formula is evaluated whole, at its first element
 		}
-		for _, got := range f.formula.Evaluate(values(list), f.Unit, e.stream(f.Name, "")) {
-			for i := range list {
-				if list[i].Name == f.Name && (len(f.labels) == 0 || elementKey(list[i].Labels, true) == got.Labels) {
-					list[i].Measured = got.Measured
+		for _, got := range t.figure.formula.Evaluate(values(results(tasks)), t.figure.Unit, e.stream("figure", t.figure.Name, "")) {
+			for _, u := range tasks[i:] {
+				if u.figure == t.figure && elementKey(u.spec.Labels) == got.Labels {
+					u.got.Measured = got.Measured
 				}
 			}
 		}
 	}
-	return list, ctx.Err()
+	return results(tasks), ctx.Err()
 }
 
-func unique(owner []*Figure) []*Figure {
-	var list []*Figure
-	for i, f := range owner {
-		if i == 0 || owner[i-1] != f {
-			list = append(list, f)
-		}
+func results(tasks []*task) []FigureElement {
+	list := make([]FigureElement, len(tasks))
+	for i, t := range tasks {
+		list[i] = t.got
 	}
 	return list
 }
 
 // parallel does the tasks on as many workers as there are processors.
-func parallel(ctx context.Context, tasks []int, do func(int)) error {
-	next := make(chan int)
+func parallel(ctx context.Context, tasks []*task, do func(*task)) error {
+	next := make(chan *task)
 	var workers sync.WaitGroup
 	for range min(runtime.GOMAXPROCS(0), len(tasks)) {
-		workers.Go(func() {
-			for i := range next {
-				do(i)
+		workers.Go(func() { // ends when next is closed
+			for t := range next {
+				do(t)
 			}
 		})
 	}
-	for _, i := range tasks {
+	for _, t := range tasks {
 		if ctx.Err() != nil {
 			break
 		}
-		next <- i
+		next <- t
 	}
 	close(next)
 	workers.Wait()
 	return ctx.Err()
 }
 
-// reduce evaluates one element.
-func (e *evaluator) reduce(ctx context.Context, f *Figure, element ElementSpec, figures []FigureElement) quantity.Measured {
-	in := reduce.Input{Bench: e.bench, Gyro: e.gyro, Options: f.options, Seed: e.stream(f.Name, elementKey(element.Labels, true))}
-	for _, r := range element.recordings {
+// reduce evaluates one element from its recordings and from figures that are done.
+func (e *evaluator) reduce(ctx context.Context, t *task, done []FigureElement) quantity.Measured {
+	f, spec := t.figure, t.spec
+	in := reduce.Input{Bench: e.bench, Gyro: e.gyro, Options: f.options, Seed: e.stream("figure", f.Name, elementKey(spec.Labels))}
+	for _, r := range spec.all() {
 		want := e.plan.expected[r]
 		if e.at[r] < 0 {
-			return quantity.Voided(f.Unit, missingReason(want))
+			return quantity.Voided(f.Unit, fmt.Sprintf("%s was not made", want))
 		}
 		rec := e.recs[e.at[r]]
 		if !rec.Quality.Complete {
-			return quantity.Voided(f.Unit, fmt.Sprintf("%s was cut short: %s", describe(want), rec.Quality.Reason))
+			return quantity.Voided(f.Unit, fmt.Sprintf("%s was cut short: %s", want, rec.Quality.Reason))
 		}
 		in.Recordings = append(in.Recordings, rec)
 	}
-	in.Noise = e.noise(f.noise, element.Labels)
+	if spec.noise != none {
+		last := len(in.Recordings) - 1
+		in.Recordings, in.Noise = in.Recordings[:last], in.Recordings[last:]
+	}
 	if f.scaleFactor != "" {
-		sf := leanOn(figures, f.scaleFactor, element.Labels)
-		if sf == nil || sf.Void != "" {
-			reason := "was not measured"
-			if sf != nil {
-				reason = "is void: " + sf.Void
-			}
-			return quantity.Voided(f.Unit, fmt.Sprintf("it leans on %s, which %s", f.scaleFactor, reason))
+		sf := leanOn(done, f.scaleFactor, spec.Labels)
+		if sf.Void != "" {
+			return quantity.Voided(f.Unit, fmt.Sprintf("it leans on %s, which is void: %s", f.scaleFactor, sf.Void))
 		}
-		in.ScaleFactor = sf
+		in.ScaleFactor = &sf
 	}
 	got, err := f.Method.Reduce(ctx, in).To(f.Unit)
 	if err != nil {
-		panic(fmt.Sprintf("procedures: method %s answers in %v, figure %s is planned in %s", f.Method.Name, err, f.Name, f.Unit))
+		panic(fmt.Sprintf("procedures: method %s answers in another dimension than figure %s is planned in: %v", f.Method.Name, f.Name, err))
 	}
 	return got
 }
 
-// noise finds the recordings from which an element's noise is taken: those made at the element's own labels first, then
-// any other, complete ones only.
-func (e *evaluator) noise(name string, labels recording.Labels) []*recording.Recording {
-	var own, others []*recording.Recording
-	for _, r := range e.recs {
-		if name == "" || r.Name != name || !r.Quality.Complete {
-			continue
-		}
-		fits := true
-		for _, l := range r.Labels {
-			want, ok := labels.Find(l.Name)
-			fits = fits && (!ok || want.Value.Same(l.Value) && (want.Visit == 0 || want.Visit == l.Visit))
-		}
-		if fits {
-			own = append(own, r)
-		} else {
-			others = append(others, r)
-		}
-	}
-	return append(own, others...)
-}
-
-func missingReason(x expected) string { return describe(x) + " was not made" }
-
-func describe(x expected) string {
+func (x expected) String() string {
 	if len(x.labels) == 0 {
 		return fmt.Sprintf("the recording %q", x.name)
 	}
 	return fmt.Sprintf("the recording %q at %s", x.name, x.labels)
 }
 
-// leanOn finds the scale-factor figure for an element: the one of equal labels, or the single one.
-func leanOn(figures []FigureElement, name string, labels recording.Labels) *quantity.Measured {
-	for i := range figures {
-		if figures[i].Name == name && (len(figures[i].Labels) == 0 || elementKey(figures[i].Labels, true) == elementKey(labels, true)) {
-			m, err := figures[i].Measured.To(quantity.MustUnit("1"))
+// leanOn finds the scale-factor error for an element, as a plain ratio: the one of equal labels, or the single one.
+func leanOn(done []FigureElement, name string, labels recording.Labels) quantity.Measured {
+	one := quantity.MustUnit("1")
+	for _, f := range done {
+		if f.Name == name && (len(f.Labels) == 0 || elementKey(f.Labels) == elementKey(labels)) {
+			m, err := f.Measured.To(one)
 			if err != nil {
-				return nil
+				panic(fmt.Sprintf("procedures: figure %s is no ratio: %v", name, err))
 			}
-			return &m
+			return m
 		}
 	}
-	return nil
+	panic(fmt.Sprintf("procedures: figure %s was planned for %s and is not among those done", name, labels))
 }
 
 // values gives figures the form that limits take.
 func values(figures []FigureElement) limits.Values {
 	v := limits.Values{}
 	for _, f := range figures {
-		v[f.Name] = append(v[f.Name], limits.Element{Labels: elementKey(f.Labels, true), Measured: f.Measured})
+		v[f.Name] = append(v[f.Name], limits.Element{Labels: elementKey(f.Labels), Measured: f.Measured})
 	}
 	return v
 }
@@ -374,21 +359,25 @@ func values(figures []FigureElement) limits.Values {
 // judge judges the wanted limits.
 func (e *evaluator) judge(figures []FigureElement, wanted func(Limit) bool) []Judgement {
 	all := values(figures)
+	labels := map[string]recording.Labels{}
+	for _, f := range figures {
+		labels[elementKey(f.Labels)] = f.Labels
+	}
 	var list []Judgement
-	for _, l := range e.plan.Limits {
+	for n, l := range e.plan.Limits {
 		if !wanted(l) {
 			continue
 		}
 		for i, part := range l.parts {
-			v := part.restrict(all)
-			for _, j := range part.limit.Judge(v, l.Rule, e.stream(l.Clause, fmt.Sprint(i))) {
-				list = append(list, Judgement{Clause: l.Clause, Require: l.Require, Rule: l.Rule.Name, EndsTrial: l.EndsTrial, Judgement: j})
+			for _, j := range part.limit.Judge(part.restrict(all), l.Rule, e.stream("limit", l.Clause, fmt.Sprint(n, i))) {
+				list = append(list, Judgement{Clause: l.Clause, Require: l.Require, Rule: l.Rule.Name, EndsTrial: l.EndsTrial, Labels: labels[j.Labels], Judgement: j})
 			}
 		}
 	}
 	return list
 }
 
+// restrict leaves the part's elements of its figure.
 func (p limitPart) restrict(all limits.Values) limits.Values {
 	if p.only == nil {
 		return all
@@ -404,12 +393,12 @@ func (p limitPart) restrict(all limits.Values) limits.Values {
 	return v
 }
 
-// stream is the seed of a propagation: a hash of run seed, slot, figure or clause, and labels.
-func (e *evaluator) stream(name, labels string) uint64 {
+// stream is the seed of a propagation: a hash of run seed, slot, kind and name of what it is for, and labels.
+func (e *evaluator) stream(kind, name, labels string) uint64 {
 	h := fnv.New64a()
 	var seed [8]byte
 	binary.LittleEndian.PutUint64(seed[:], e.seed)
 	h.Write(seed[:])
-	fmt.Fprintf(h, "%s\x00%s\x00%s", e.slot, name, labels)
+	fmt.Fprintf(h, "%s\x00%s\x00%s\x00%s", e.slot, kind, name, labels)
 	return h.Sum64()
 }

@@ -2,8 +2,8 @@ package procedures
 
 import (
 	"fmt"
+	"regexp"
 	"slices"
-	"strconv"
 	"strings"
 
 	"proofrate/limits"
@@ -14,55 +14,69 @@ import (
 	"proofrate/results/reduce"
 )
 
-// recordingKey tells recordings of a run apart: by name and labels, nominal values and visits.
-func recordingKey(name string, labels recording.Labels) string {
-	return name + "|" + elementKey(labels, true)
-}
-
-// elementKey is the key of labels, which limits use for an element of a series.
-func elementKey(labels recording.Labels, visits bool) string {
+// elementKey is the key of labels, which limits use for an element of a series: nominal values, and visits where they
+// are told apart.
+func elementKey(labels recording.Labels) string {
 	parts := make([]string, len(labels))
 	for i, l := range labels {
 		parts[i] = l.Name + " " + l.Value.String()
-		if visits && l.Visit > 0 {
+		if l.Visit > 0 {
 			parts[i] += fmt.Sprintf(" (visit %d)", l.Visit)
 		}
 	}
 	return strings.Join(parts, ", ")
 }
 
-// figures works out every figure: method or formula, unit, elements and their recordings.
+// planFigures works out every figure: method or formula, unit, elements and their recordings. A figure follows those
+// that it leans on, whatever the order in the document.
 func (p *planner) planFigures() {
-	var known []string
 	named := p.procedure.root.Free("figures")
 	for _, f := range named {
-		known = append(known, f.Name)
+		p.names = append(p.names, f.Name)
+		if !identifier.MatchString(f.Name) || slices.Contains(expressionWords, f.Name) {
+			p.add(f.Span, "wrong-name", "letters, digits and _, a letter first, and no word of the expressions' own", "%q cannot name a figure: expressions could not use it", f.Name)
+		}
 	}
 	for _, f := range named {
-		figure := Figure{Name: f.Name, Span: f.Span}
 		is, formula := f.Map.Stands("is"), f.Map.Stands("formula")
 		switch {
 		case is == formula:
 			p.add(f.Span, "wrong-figure", "give one of them", "figure %s is a method of the catalogue (`is`) or computed (`formula`)", f.Name)
-			p.figures[f.Name] = limits.FigureType{}
-			continue
-		case formula:
-			p.formula(&figure, f.Map)
-		default:
-			p.reduced(&figure, f.Map, known)
+		case is:
+			figure := Figure{Name: f.Name, Span: f.Span}
+			p.reduced(&figure, f.Map)
+			p.figures[f.Name] = limits.FigureType{Unit: figure.Unit, Labels: figure.labels}
+			p.plan.Figures = append(p.plan.Figures, figure)
 		}
-		p.figures[f.Name] = limits.FigureType{Unit: figure.Unit, Labels: figure.labels}
-		p.plan.Figures = append(p.plan.Figures, figure)
 	}
-	p.scaleFactors(named)
+	for _, f := range named {
+		if f.Map.Has("scale-factor") {
+			p.scaleFactor(f)
+		}
+	}
+	p.formulas(named)
 }
 
+// identifier is what a figure's name must be: in an expression, - is a minus.
+var identifier = regexp.MustCompile(`^[A-Za-z][A-Za-z0-9_]*$`)
+
+// expressionWords are names that expressions have for themselves.
+var expressionWords = []string{"abs", "min", "max", "mean", "spread", "and", "or", "not", "in", "true", "false", "nil", "let", "if", "else",
+	"matches", "contains", "startsWith", "endsWith"}
+
 // unit reads a figure's unit and holds it against the dimension that the method yields.
-func (p *planner) unit(m document.Map, want *quantity.Dimension, natural quantity.Unit) quantity.Unit {
-	if !m.Has("unit") {
-		if want != nil && *want != quantity.Ratio {
-			p.add(m.Span, "missing-key", "state unit, such as "+fitting(*want), "a figure in %s needs its unit of measure", want)
+func (p *planner) unit(f *Figure, m document.Map, want *quantity.Dimension, natural quantity.Unit) quantity.Unit {
+	if !m.Stands("unit") {
+		if want == nil || *want != quantity.Ratio {
+			help, in := "state unit, such as unit: deg/h", ""
+			if want != nil {
+				help, in = "units that fit: "+fitting(*want), ", in "+want.String()
+			}
+			p.add(f.Span, "missing-unit", help, "figure %s needs its unit of measure%s", f.Name, in)
 		}
+		return natural
+	}
+	if !m.Has("unit") {
 		return natural
 	}
 	unit, err := quantity.ParseUnit(m.Text("unit"))
@@ -71,7 +85,7 @@ func (p *planner) unit(m document.Map, want *quantity.Dimension, natural quantit
 		return natural
 	}
 	if want != nil && unit.Dimension() != *want {
-		p.add(m.ValueSpan("unit"), "wrong-dimension", "units that fit: "+fitting(*want), "%s is a unit of %s; this figure is in %s", unit, unit.Dimension(), want)
+		p.add(m.ValueSpan("unit"), "wrong-dimension", "units that fit: "+fitting(*want), "%s is a unit of %s; figure %s is in %s", unit, unit.Dimension(), f.Name, want)
 		return natural
 	}
 	return unit
@@ -86,311 +100,158 @@ func fitting(d quantity.Dimension) string {
 }
 
 // methodKeys are the keys of a reduced figure that every method has; others need the method's leave.
-var methodKeys = []string{"is", "of", "per", "over", "at", "pick", "unit"}
+var methodKeys = []string{"is", "of", "per", "at", "pick", "unit"}
 
-func (p *planner) reduced(f *Figure, m document.Map, figures []string) {
+func (p *planner) reduced(f *Figure, m document.Map) {
 	method, ok := reduce.Find(m.Text("is"))
 	if !ok {
 		return // reported by the table
 	}
 	f.Method = method
 	dimension := method.Unit.Dimension()
-	f.Unit = p.unit(m, &dimension, method.Unit)
+	f.Unit = p.unit(f, m, &dimension, method.Unit)
 	for _, key := range figureTable.Names() {
-		if m.Stands(key) && !slices.Contains(methodKeys, key) && !slices.Contains(method.Options, key) {
+		fits := slices.Contains(methodKeys, key) || slices.Contains(method.Options, key) || key == "over" && slices.Contains(method.Needs, key)
+		if m.Stands(key) && !fits && key != "formula" {
 			p.add(m.KeySpan(key), "unfit-option", "leave it out", "%s has no option %s", method.Name, key)
 		}
 	}
-	if method.Measurand && !m.Has("measurand") {
-		p.add(f.Span, "missing-measurand", "state measurand: sample or measurand: population", "figure %s: is it the statistic of these samples, or the gyro's parameter?", f.Name)
+	if method.Measurand && !m.Stands("measurand") {
+		p.add(f.Span, "missing-measurand", "state measurand: sample or measurand: population", "figure %s: is it the statistic of these samples, or the gyro's parameter? There is no default", f.Name)
 	}
-	if method.Output != "" && method.Output != p.plan.Gyro.Output {
-		p.add(m.ValueSpan("is"), "unfit-method", "", "%s is for gyros with output %s; this one's is %s", method.Name, method.Output, p.plan.Gyro.Output)
+	if output := p.plan.Gyro.Output; method.Output != "" && output != "" && method.Output != output {
+		p.add(m.ValueSpan("is"), "unfit-method", "", "%s is for gyros with output %s; this one's is %s", method.Name, method.Output, output)
 	}
-	if slices.Contains(method.Options, "tau") && !m.Has("tau") {
-		p.add(f.Span, "missing-key", "state tau, such as tau: 10 s", "figure %s needs an averaging time", f.Name)
+	if slices.Contains(method.Options, "tau") {
+		if !m.Stands("tau") {
+			p.add(f.Span, "missing-key", "state tau, such as tau: 10 s", "figure %s needs an averaging time", f.Name)
+		}
+		p.above(m, "tau")
+	}
+	if m.Stands("least") && m.Text("relative-to") != "reading" {
+		p.add(m.KeySpan("least"), "unfit-option", "state relative-to: reading", "least has a meaning only for a nonlinearity relative to reading")
 	}
 	f.options = reduce.Options{Measurand: m.Text("measurand"), Tau: m.Quantity("tau").SI(), Relative: m.Text("relative-to"),
 		Least: m.Quantity("least").SI(), Unscaled: m.Has("scale")}
-	f.scaleFactor = m.Text("scale-factor")
-	if m.Has("scale-factor") && !slices.Contains(figures, f.scaleFactor) {
-		p.add(m.ValueSpan("scale-factor"), "unknown-figure", source.DidYouMean(f.scaleFactor, figures), "unknown figure %q", f.scaleFactor)
-		f.scaleFactor = ""
-	}
-	p.noise(f, m)
-	if !m.Has("of") {
-		p.add(f.Span, "missing-key", "name the recordings it is reduced from", "figure %s needs the key \"of\"", f.Name)
-		return
-	}
-	p.elements(f, m)
-}
-
-// noise checks the recording that a figure's noise is taken from: without one, its uncertainty could not be told.
-func (p *planner) noise(f *Figure, m document.Map) {
-	f.noise = m.Text("noise")
-	if !slices.Contains(f.Method.Options, "noise") {
-		return
-	}
-	if !m.Has("noise") {
-		p.add(f.Span, "missing-key", "state noise: with the name of a recording at rest", "figure %s needs a recording at rest from which the gyro's noise is taken", f.Name)
-		return
-	}
-	var names []string
-	for _, e := range p.plan.expected {
-		if e.name == f.noise {
-			return
-		}
-		names = append(names, e.name)
-	}
-	p.add(m.ValueSpan("noise"), "no-recording", source.DidYouMean(f.noise, names), "no step makes a recording %q", f.noise)
-}
-
-// selector is one label of `per`, with whether its visits are told apart.
-type selector struct {
-	name  string
-	visit bool
-}
-
-// selectors reads `per: temperature visit`.
-func (p *planner) selectors(m document.Map, key string) []selector {
-	var list []selector
-	for _, word := range m.Words(key) {
-		if word != "visit" {
-			list = append(list, selector{name: word})
-			continue
-		}
-		if len(list) == 0 {
-			p.add(m.ValueSpan(key), "wrong-value", "write the label first, as in temperature visit", "%s: visit follows the label whose visits it tells apart", key)
-			continue
-		}
-		list[len(list)-1].visit = true
-	}
-	return list
-}
-
-// condition is one entry of `at:`.
-type condition struct {
-	name  string
-	value quantity.Value
-	visit int // 0: any
-}
-
-// conditions reads `at: {temperature: 23 degC, visit: 1}`; visit belongs to the label before it.
-func (p *planner) conditions(m document.Map) []condition {
-	var list []condition
-	for _, e := range p.entries(m.Node("at"), "at") {
-		if e.Key.Text() == "visit" {
-			n, err := strconv.Atoi(e.Value.Text())
-			if err != nil || n < 1 || len(list) == 0 {
-				p.add(e.Key.Span, "wrong-value", "write {temperature: 23 degC, visit: 1}", "visit is a number from 1 and follows its label")
-				continue
-			}
-			list[len(list)-1].visit = n
-			continue
-		}
-		v, err := quantity.Parse(e.Value.Text())
-		if err != nil {
-			p.add(e.Value.Span, "wrong-value", "", "at %s: %v", e.Key.Text(), err)
-			continue
-		}
-		list = append(list, condition{name: e.Key.Text(), value: v})
-	}
-	return list
-}
-
-func (c condition) fits(labels recording.Labels) bool {
-	l, ok := labels.Find(c.name)
-	return ok && l.Value.Same(c.value) && (c.visit == 0 || c.visit == l.Visit)
-}
-
-// elements groups the expected recordings of a figure.
-func (p *planner) elements(f *Figure, m document.Map) {
-	of := m.Text("of")
-	f.recordings = []string{of}
-	var all []int
-	var names []string
-	for i, e := range p.plan.expected {
-		if e.name == of {
-			all = append(all, i)
-		}
-		if !slices.Contains(names, e.name) {
-			names = append(names, e.name)
-		}
-	}
-	if len(all) == 0 {
-		p.add(m.ValueSpan("of"), "no-recording", source.DidYouMean(of, names), "no step makes a recording %q", of)
-		return
-	}
-	per, over := p.selectors(m, "per"), p.selectors(m, "over")
-	conditions := p.conditions(m)
-	if !p.labelled(m, all, per, over, conditions) {
-		return
-	}
-	groups := map[string]int{}
-	for _, i := range all {
-		labels := p.plan.expected[i].labels
-		if slices.ContainsFunc(conditions, func(c condition) bool { return !c.fits(labels) }) {
-			continue
-		}
-		element := elementLabels(labels, per)
-		key := elementKey(element, true)
-		at, known := groups[key]
-		if !known {
-			at = len(f.Elements)
-			groups[key] = at
-			f.Elements = append(f.Elements, ElementSpec{Labels: element})
-		}
-		f.Elements[at].recordings = append(f.Elements[at].recordings, i)
-	}
-	for _, s := range per {
-		f.labels = append(f.labels, s.name)
-		if s.visit {
-			f.labels = append(f.labels, s.name+" visit")
-		}
-	}
-	if len(f.Elements) == 0 {
-		p.add(m.KeySpan("at"), "no-recording", "", "no recording %q is made at that", of)
-	}
-	for i := range f.Elements {
-		p.chosen(f, &f.Elements[i], m)
-	}
-}
-
-// elementLabels are the labels of `per`, with a visit only where it is told apart.
-func elementLabels(labels recording.Labels, per []selector) recording.Labels {
-	var list recording.Labels
-	for _, s := range per {
-		l, _ := labels.Find(s.name)
-		if !s.visit {
-			l.Visit = 0
-		}
-		list = append(list, l)
-	}
-	return list
-}
-
-// labelled checks that the recordings carry every label that the figure asks for.
-func (p *planner) labelled(m document.Map, all []int, per, over []selector, conditions []condition) bool {
-	var known []string
-	for _, l := range p.plan.expected[all[0]].labels {
-		known = append(known, l.Name)
-	}
-	sound := true
-	check := func(span source.Span, name string) {
-		if slices.Contains(known, name) {
-			return
-		}
-		sound = false
-		help := source.DidYouMean(name, known)
-		if len(known) == 0 {
-			help = "it is made in no loop"
-		}
-		p.add(span, "no-label", help, "recording %q has no label %q", m.Text("of"), name)
-	}
-	for _, s := range per {
-		check(m.ValueSpan("per"), s.name)
-	}
-	for _, s := range over {
-		check(m.ValueSpan("over"), s.name)
-	}
-	for _, c := range conditions {
-		check(m.ValueSpan("at"), c.name)
-	}
-	if method, ok := reduce.Find(m.Text("is")); ok {
-		for _, need := range method.Needs {
-			if need == "over" {
-				if len(over) == 0 {
-					p.add(m.KeySpan("is"), "missing-key", "say over which label, as in over: cycle", "%s needs the key \"over\"", method.Name)
-					sound = false
-				}
-				continue
-			}
-			check(m.ValueSpan("of"), need)
-		}
-	}
-	return sound
-}
-
-// chosen holds the number of recordings of an element against what the method takes.
-func (p *planner) chosen(f *Figure, e *ElementSpec, m document.Map) {
-	n := len(e.recordings)
-	where := ""
-	if len(e.Labels) > 0 {
-		where = " at " + e.Labels.String()
-	}
 	switch {
-	case f.Method.Several && n < 2:
-		p.add(m.ValueSpan("of"), "too-few", "", "%s needs several recordings; %q has %d%s", f.Method.Name, m.Text("of"), n, where)
-	case !f.Method.Several && n > 1 && m.Text("pick") == "first":
-		e.recordings = e.recordings[:1]
-	case !f.Method.Several && n > 1 && m.Text("pick") == "last":
-		e.recordings = e.recordings[n-1:]
-	case !f.Method.Several && n > 1:
-		key := "of"
-		if m.Stands("at") {
-			key = "at"
-		}
-		p.add(m.ValueSpan(key), "ambiguous", "name the visit, make it a series with per, or pick: first or last", "%d recordings %q fit%s; %s takes one", n, m.Text("of"), where, f.Method.Name)
+	case m.Has("of"):
+		p.elements(f, m)
+	case !m.Stands("of"):
+		p.add(f.Span, "missing-key", "name the recordings it is reduced from", "figure %s needs the key \"of\"", f.Name)
 	}
 }
 
-func (p *planner) formula(f *Figure, m document.Map) {
+// scaleFactor checks that the figure named by scale-factor can serve: a scale-factor error, single or a series with
+// the labels of the figure that leans on it.
+func (p *planner) scaleFactor(n document.Named) {
+	f, name, at := p.planned(n.Name), n.Map.Text("scale-factor"), n.Map.ValueSpan("scale-factor")
+	if f == nil || !slices.Contains(f.Method.Options, "scale-factor") {
+		return
+	}
+	if !slices.Contains(p.names, name) {
+		p.add(at, "unknown-figure", source.DidYouMean(name, p.names), "unknown figure %q", name)
+		return
+	}
+	other := p.planned(name)
+	if other == nil || other.Method.Name != "scale-factor-error" {
+		p.add(at, "unfit-figure", "name a figure that is: scale-factor-error", "figure %s is no scale-factor error", name)
+		return
+	}
+	if len(other.labels) > 0 && !slices.Equal(other.labels, f.labels) {
+		p.add(at, "unfit-figure", "give both the same per", "figure %s is a series over %s, %s is not", name, strings.Join(other.labels, " "), f.Name)
+		return
+	}
+	for _, e := range f.Elements {
+		if len(other.labels) > 0 && !slices.ContainsFunc(other.Elements, func(o ElementSpec) bool { return elementKey(o.Labels) == elementKey(e.Labels) }) && !p.partial {
+			p.add(at, "unfit-figure", "", "figure %s is not measured at %s", name, e.Labels)
+			return
+		}
+	}
+	f.scaleFactor = name
+}
+
+// formulas compiles those figures that are computed, each after those that it names.
+func (p *planner) formulas(named []document.Named) {
+	waiting := map[string]document.Named{}
+	for _, f := range named {
+		if f.Map.Stands("formula") && !f.Map.Stands("is") {
+			waiting[f.Name] = f
+		}
+	}
+	for _, f := range named {
+		if _, ok := waiting[f.Name]; ok {
+			p.formulaAfter(f, waiting, nil)
+		}
+	}
+}
+
+var wordPattern = regexp.MustCompile(`[A-Za-z][A-Za-z0-9_]*`)
+
+func (p *planner) formulaAfter(f document.Named, waiting map[string]document.Named, path []string) {
+	delete(waiting, f.Name)
+	path = append(path, f.Name)
+	for _, word := range wordPattern.FindAllString(f.Map.Text("formula"), -1) {
+		if slices.Contains(path, word) {
+			p.add(f.Map.ValueSpan("formula"), "circular", "", "figure %s leans on itself: %s", word, strings.Join(append(path, word), ", "))
+			return
+		}
+		if other, ok := waiting[word]; ok {
+			p.formulaAfter(other, waiting, path)
+		}
+	}
+	p.formula(f)
+}
+
+func (p *planner) formula(n document.Named) {
+	f, m := Figure{Name: n.Name, Span: n.Span}, n.Map
 	for _, key := range figureTable.Names() {
 		if m.Stands(key) && key != "formula" && key != "unit" {
 			p.add(m.KeySpan(key), "unfit-option", "leave it out", "a formula has no option %s", key)
 		}
 	}
-	f.Unit = p.unit(m, nil, quantity.Unit{})
+	f.Unit = p.unit(&f, m, nil, quantity.Unit{})
 	if !m.Has("formula") {
 		return
 	}
-	compiled, problems := limits.CompileFormula(place(m, "formula"), p.figures)
+	if p.broken(m.Text("formula")) {
+		return
+	}
+	compiled, problems := limits.CompileFormula(p.place(m, "formula"), p.figures)
 	if len(problems) > 0 {
-		p.problems = append(p.problems, problems...)
+		p.report(problems)
 		return
 	}
 	f.formula, f.labels = compiled, compiled.Labels()
-	for _, name := range compiled.Figures() {
-		f.Elements = p.elementsOf(f, name)
-	}
+	f.Elements = p.elementsLike(f.labels, compiled.Figures())
+	p.figures[f.Name] = limits.FigureType{Unit: f.Unit, Labels: f.labels}
+	p.plan.Figures = append(p.plan.Figures, f)
 }
 
-// elementsOf: a formula that is a series has the elements of the series it is over.
-func (p *planner) elementsOf(f *Figure, name string) []ElementSpec {
-	if len(f.labels) == 0 {
-		return []ElementSpec{{}}
+// broken says whether an expression names a figure that was refused: that is reported, and no further mistake.
+func (p *planner) broken(expression string) bool {
+	for _, word := range wordPattern.FindAllString(expression, -1) {
+		if _, sound := p.figures[word]; !sound && slices.Contains(p.names, word) {
+			return true
+		}
 	}
-	for _, other := range p.plan.Figures {
-		if other.Name == name && slices.Equal(other.labels, f.labels) {
-			var list []ElementSpec
+	return false
+}
+
+// elementsLike: a formula that is a series has the elements of the series that it is over.
+func (p *planner) elementsLike(labels, figures []string) []ElementSpec {
+	if len(labels) == 0 {
+		return []ElementSpec{{noise: none}}
+	}
+	var list []ElementSpec
+	for _, name := range figures {
+		if other := p.planned(name); other != nil && slices.Equal(other.labels, labels) {
 			for _, e := range other.Elements {
-				list = append(list, ElementSpec{Labels: e.Labels})
+				list = append(list, ElementSpec{Labels: e.Labels, noise: none})
 			}
-			return list
+			break
 		}
 	}
-	return f.Elements
+	return list
 }
 
-// scaleFactors checks that a figure named by scale-factor is one, with the same series.
-func (p *planner) scaleFactors(named []document.Named) {
-	for i, f := range p.plan.Figures {
-		if f.scaleFactor == "" {
-			continue
-		}
-		for _, other := range p.plan.Figures {
-			if other.Name != f.scaleFactor {
-				continue
-			}
-			var span source.Span
-			for _, n := range named {
-				if n.Name == f.Name {
-					span = n.Map.ValueSpan("scale-factor")
-				}
-			}
-			if other.Method.Name != "scale-factor-error" || len(other.labels) > 0 && !slices.Equal(other.labels, p.plan.Figures[i].labels) {
-				p.add(span, "unfit-figure", "name a scale-factor-error that is single, or a series over the same labels", "figure %s cannot serve as scale factor here", other.Name)
-			}
-		}
-	}
-}
+func (p *planner) planned(name string) *Figure { return p.plan.figure(name) }

@@ -21,7 +21,10 @@ type Procedure struct {
 	root   document.Map
 }
 
-// Load reads a procedure and holds it against the language. What depends on part and parameters is found by Plan.
+// Load reads a procedure and reports every mistake that needs no bench, in one pass: of the document, and of its plans
+// as it stands and for each variant. Parameters that are set for a run are for Plan.
+//
+// The procedure is nil only if the text could not be read as a document at all.
 func Load(name string, text []byte) (*Procedure, *source.File, source.List) {
 	file, root, problems := document.Read(name, text)
 	if root == nil {
@@ -31,11 +34,63 @@ func Load(name string, text []byte) (*Procedure, *source.File, source.List) {
 	p.root = document.Decode(root, &procedureTable, &problems)
 	p.Name = p.root.Text("procedure")
 	for _, pattern := range p.root.Words("applies-to") {
-		if strings.Trim(pattern, "*") == "" && pattern != "*" || strings.ContainsAny(pattern, "?[]\\") {
+		if !patternPattern.MatchString(pattern) {
 			problems.Addf(p.root.ValueSpan("applies-to"), "wrong-value", "write part numbers, with * for any characters", "applies-to: %q is no pattern", pattern)
 		}
 	}
-	return p, file, problems
+	var found findings
+	found.report(problems)
+	_, planned := p.Plan(Options{})
+	found.report(planned)
+	for _, part := range p.variants() {
+		_, planned := p.Plan(Options{Part: part})
+		found.report(planned)
+	}
+	found.list.Sort()
+	return p, file, found.list
+}
+
+// patternPattern: letters and digits, signs that part numbers have, and *.
+var patternPattern = regexp.MustCompile(`^[\pL\pN*_./+-]+$`)
+
+// variants are the part numbers that have a variant.
+func (p *Procedure) variants() []string {
+	var parts []string
+	if n := p.root.Node("variants"); n != nil {
+		for _, e := range n.Entries() {
+			parts = append(parts, e.Key.Text())
+		}
+	}
+	return parts
+}
+
+// findings gathers diagnostics, each mistake once however often a loop or a variant comes by it.
+type findings struct {
+	list  source.List
+	known map[finding]bool
+}
+
+type finding struct {
+	span    source.Span
+	message string
+}
+
+func (f *findings) report(list source.List) {
+	if f.known == nil {
+		f.known = map[finding]bool{}
+	}
+	for _, d := range list {
+		if key := (finding{d.Span, d.Message}); !f.known[key] {
+			f.known[key] = true
+			f.list = append(f.list, d)
+		}
+	}
+}
+
+func (f *findings) add(span source.Span, code, help, format string, args ...any) {
+	var one source.List
+	one.Addf(span, code, help, format, args...)
+	f.report(one)
 }
 
 func digest(text []byte) string {

@@ -32,7 +32,8 @@ type Plan struct {
 	Figures                              []Figure
 	Limits                               []Limit
 
-	expected []expected // every recording that the steps make, in order
+	expected []expected             // every recording that the steps make, in order
+	places   map[string]source.Span // of the document's own keys
 }
 
 // GyroSpec is what the procedure says of the gyro.
@@ -140,10 +141,16 @@ type expected struct {
 	name   string
 	labels recording.Labels
 	leg    string
+	rest   time.Duration // of a recording at rest, its length; else 0
 	span   source.Span
 }
 
+// key tells recordings of a run apart: by name and labels, nominal values and visits.
 func (e expected) key() string { return recordingKey(e.name, e.labels) }
+
+func recordingKey(name string, labels recording.Labels) string {
+	return name + "|" + elementKey(labels)
+}
 
 // Figure is a figure with its elements worked out.
 type Figure struct {
@@ -158,14 +165,17 @@ type Figure struct {
 	noise       string // recording
 	formula     *limits.Formula
 	labels      []string // that index the series
-	recordings  []string // names of those it is reduced from
 }
 
 // ElementSpec is one element: its labels, and the recordings it is reduced from.
 type ElementSpec struct {
 	Labels     recording.Labels
 	recordings []int // into the plan's expected recordings
+	noise      int   // the one at rest that tells the gyro's noise, or none
 }
+
+// none stands for no recording.
+const none = -1
 
 // Limit is a requirement with its rule.
 type Limit struct {

@@ -14,29 +14,38 @@ import (
 
 // planLimits works out every limit.
 func (p *planner) planLimits() {
-	var names []string
-	for _, f := range p.procedure.root.Free("figures") {
-		names = append(names, f.Name)
-	}
-	clauses := map[string]bool{}
+	var clauses, structured []string
+	said := map[string]bool{}
 	for _, m := range p.procedure.root.List("limits") {
 		l := Limit{Clause: m.Text("clause"), EndsTrial: m.Has("otherwise"), Span: m.KeySpan("clause")}
-		clauses[l.Clause] = true
+		clauses = append(clauses, l.Clause)
 		l.Rule = p.rule(m)
-		switch structured, expression := m.Stands("figure"), m.Stands("require"); {
-		case structured == expression:
-			p.add(l.Span, "wrong-limit", "give figure with at-most, at-least or between, or give require", "the limit of clause %s names no figure and no requirement, or both", l.Clause)
+		switch bounded, expression := m.Stands("figure"), m.Stands("require"); {
+		case bounded && expression:
+			p.add(l.Span, "wrong-limit", "write two limits", "the limit of clause %s has a figure and a requirement", l.Clause)
+			continue
+		case !bounded && !expression:
+			p.add(l.Span, "wrong-limit", "give figure with at-most, at-least or between, or give require", "the limit of clause %s names no figure and no requirement", l.Clause)
 			continue
 		case expression:
 			p.required(&l, m)
 		default:
-			p.boundedFigure(&l, m, names)
+			structured = append(structured, l.Clause)
+			p.bounded(&l, m)
+		}
+		if key := l.Clause + "\x00" + l.Require; l.Require != "" && said[key] {
+			p.add(l.Span, "duplicate-limit", "leave one out", "clause %s requires %s twice", l.Clause, l.Require)
+		} else {
+			said[key] = true
 		}
 		p.plan.Limits = append(p.plan.Limits, l)
 	}
 	for _, e := range p.entries(p.variant.Node("bounds"), "bounds") {
-		if !clauses[e.Key.Text()] {
-			p.add(e.Key.Span, "unknown-clause", "", "no limit has the clause %s", e.Key.Text())
+		switch {
+		case !slices.Contains(clauses, e.Key.Text()):
+			p.add(e.Key.Span, "unknown-clause", source.DidYouMean(e.Key.Text(), clauses), "no limit has the clause %s", e.Key.Text())
+		case !slices.Contains(structured, e.Key.Text()):
+			p.add(e.Key.Span, "wrong-limit", "write the limit with figure, or use a parameter", "the limit of clause %s is an expression; a variant gives other bounds to a figure's", e.Key.Text())
 		}
 	}
 }
@@ -66,167 +75,211 @@ func (p *planner) required(l *Limit, m document.Map) {
 			p.add(m.KeySpan(key), "wrong-limit", "put it into the expression", "%s goes with figure, not with require", key)
 		}
 	}
-	if !m.Has("require") {
+	if !m.Has("require") || p.broken(m.Text("require")) {
 		return
 	}
 	l.Require = m.Text("require")
-	compiled, problems := limits.Compile(place(m, "require"), p.figures)
+	compiled, problems := limits.Compile(p.place(m, "require"), p.figures)
 	if len(problems) > 0 {
-		p.problems = append(p.problems, problems...)
+		p.report(problems)
 		return
 	}
 	if len(compiled.Figures()) == 0 {
-		p.add(m.ValueSpan("require"), "no-figure", "", "the requirement names no figure")
+		p.add(m.ValueSpan("require"), "no-figure", source.DidYouMean("", p.names), "the requirement names no figure")
 	}
 	l.parts = []limitPart{{limit: compiled}}
 }
 
-// boundedFigure makes a structured limit.
-func (p *planner) boundedFigure(l *Limit, m document.Map, names []string) {
+// bound is what a structured limit says of its figure.
+type bound struct {
+	limit  *Limit
+	figure *Figure
+	key    string // at-most, at-least or between
+	at     conditions
+}
+
+// bounded makes a structured limit.
+func (p *planner) bounded(l *Limit, m document.Map) {
 	name := m.Text("figure")
 	if name == "" {
-		return
+		return // refused by the table
 	}
-	if !slices.Contains(names, name) {
-		p.add(m.ValueSpan("figure"), "unknown-figure", source.DidYouMean(name, names), "unknown figure %q", name)
-		return
+	b := bound{limit: l, figure: p.planned(name)}
+	if !slices.Contains(p.names, name) {
+		p.add(m.ValueSpan("figure"), "unknown-figure", source.DidYouMean(name, p.names), "unknown figure %q", name)
 	}
-	key := ""
-	for _, k := range []string{"at-most", "at-least", "between"} {
-		if m.Stands(k) {
-			if key != "" {
-				p.add(m.KeySpan(k), "wrong-limit", "for both, write between: LOW HIGH UNIT", "the limit of clause %s has two bounds", l.Clause)
-				return
-			}
-			key = k
+	for _, key := range []string{"at-most", "at-least", "between"} {
+		switch {
+		case !m.Stands(key):
+		case b.key != "":
+			p.add(m.KeySpan(key), "wrong-limit", "for both, write between: LOW HIGH UNIT", "the limit of clause %s has two bounds", l.Clause)
+			return
+		default:
+			b.key = key
 		}
 	}
-	if key == "" {
+	if b.key == "" {
 		p.add(l.Span, "wrong-limit", "give at-most, at-least or between", "the limit of clause %s has no bound", l.Clause)
 		return
 	}
-	f := p.planned(name)
-	if f == nil {
+	b.at = p.conditions(m)
+	node := p.variantBound(b, m.Node(b.key))
+	if b.figure == nil {
 		return
 	}
-	node := m.Node(key)
-	for _, e := range p.entries(p.variant.Node("bounds"), "bounds") {
-		if e.Key.Text() == l.Clause {
-			if other := e.Value.Value(key); other != nil {
-				node = other
-			} else {
-				p.add(e.Key.Span, "wrong-limit", "", "clause %s is bounded by %s; the variant gives none", l.Clause, key)
-			}
-		}
-	}
-	at := p.conditions(m)
-	for _, c := range at {
-		if !slices.Contains(f.labels, c.name) {
-			p.add(m.ValueSpan("at"), "no-label", source.DidYouMean(c.name, f.labels), "figure %s has no label %q", name, c.name)
+	for _, c := range b.at {
+		if !slices.Contains(b.figure.labels, c.name) {
+			p.noFigureLabel(c.span, b.figure, c.name)
 			return
 		}
 	}
-	if !m.Has("per") {
-		l.Require = fmt.Sprintf("%s %s %s", name, strings.ReplaceAll(key, "-", " "), node.Text())
-		p.boundPart(l, f, key, node, at)
+	if m.Stands("per") {
+		p.boundsPer(b, m, node)
 		return
 	}
-	p.boundsPer(l, f, m, key, node, at)
+	l.Require = fmt.Sprintf("%s %s %s", name, strings.ReplaceAll(b.key, "-", " "), node.Text())
+	if len(b.at) > 0 {
+		l.Require += " at " + b.at.String()
+	}
+	p.boundPart(b, node, b.at)
 }
 
-func (p *planner) planned(name string) *Figure {
-	for i := range p.plan.Figures {
-		if p.plan.Figures[i].Name == name {
-			return &p.plan.Figures[i]
+func (list conditions) String() string {
+	parts := make([]string, len(list))
+	for i, c := range list {
+		if parts[i] = c.name + " " + c.value.String(); c.visit > 0 {
+			parts[i] += fmt.Sprintf(" (visit %d)", c.visit)
 		}
 	}
-	return nil
+	return strings.Join(parts, ", ")
+}
+
+// noFigureLabel reports a label that a figure is no series over.
+func (p *planner) noFigureLabel(at source.Span, f *Figure, name string) {
+	labels := slices.DeleteFunc(slices.Clone(f.labels), func(l string) bool { return strings.HasSuffix(l, " visit") })
+	help := source.DidYouMean(name, labels)
+	if len(labels) == 0 {
+		help = "it is a single figure; per makes it a series"
+	}
+	p.add(at, "no-label", help, "figure %s has no label %q", f.Name, name)
+}
+
+// variantBound is the bound that the variant gives for the clause, or the limit's own.
+func (p *planner) variantBound(b bound, own *document.Node) *document.Node {
+	for _, e := range p.entries(p.variant.Node("bounds"), "bounds") {
+		if e.Key.Text() != b.limit.Clause {
+			continue
+		}
+		var problems source.List
+		m := document.Decode(e.Value, &boundTable, &problems)
+		p.report(problems)
+		if other := m.Node(b.key); other != nil {
+			return other
+		}
+		p.add(e.Key.Span, "wrong-limit", "", "clause %s is bounded by %s; the variant gives none", b.limit.Clause, b.key)
+	}
+	return own
 }
 
 // boundsPer reads `per: temperature` with bounds by its value.
-func (p *planner) boundsPer(l *Limit, f *Figure, m document.Map, key string, node *document.Node, at []condition) {
+func (p *planner) boundsPer(b bound, m document.Map, node *document.Node) {
 	per := m.Text("per")
-	if !slices.Contains(f.labels, per) {
-		p.add(m.ValueSpan("per"), "no-label", source.DidYouMean(per, f.labels), "figure %s has no label %q", f.Name, per)
+	if per == "" {
+		return // refused by the table
+	}
+	if !slices.Contains(b.figure.labels, per) {
+		p.noFigureLabel(m.ValueSpan("per"), b.figure, per)
 		return
 	}
 	var said []string
 	covered := map[string]bool{}
-	for _, e := range p.entries(node, key) {
+	for _, e := range p.entries(node, b.key+" per "+per) {
 		v, err := quantity.Parse(e.Key.Text())
 		if err != nil {
-			p.add(e.Key.Span, "wrong-value", "", "%s per %s: %v", key, per, err)
+			p.add(e.Key.Span, "wrong-value", "", "%s per %s: %v", b.key, per, err)
 			continue
 		}
-		c := append(slices.Clone(at), condition{name: per, value: v})
-		for _, element := range f.Elements {
-			if !slices.ContainsFunc(c, func(c condition) bool { return !c.fits(element.Labels) }) {
-				covered[elementKey(element.Labels, true)] = true
+		at := append(slices.Clone(b.at), condition{per, v, 0, e.Key.Span})
+		for _, element := range b.figure.Elements {
+			if key := elementKey(element.Labels); at.fit(element.Labels) {
+				if covered[key] {
+					p.add(e.Key.Span, "duplicate-name", "", "%s has a bound already", v)
+				}
+				covered[key] = true
 			}
 		}
 		said = append(said, fmt.Sprintf("%s at %s", e.Value.Text(), v))
-		p.boundPart(l, f, key, e.Value, c)
+		p.boundPart(b, e.Value, at)
 	}
-	for _, element := range f.Elements {
-		inside := !slices.ContainsFunc(at, func(c condition) bool { return !c.fits(element.Labels) })
-		if inside && !covered[elementKey(element.Labels, true)] {
-			p.add(m.KeySpan(key), "no-bound", "", "the limit of clause %s has no bound at %s", l.Clause, element.Labels)
+	if node.Form != document.Mapping {
+		return
+	}
+	for _, element := range b.figure.Elements {
+		if b.at.fit(element.Labels) && !covered[elementKey(element.Labels)] {
+			p.add(m.KeySpan(b.key), "no-bound", "", "the limit of clause %s has no bound at %s", b.limit.Clause, element.Labels)
 			break
 		}
 	}
-	l.Require = fmt.Sprintf("%s %s %s", f.Name, strings.ReplaceAll(key, "-", " "), strings.Join(said, ", "))
+	b.limit.Require = fmt.Sprintf("%s %s %s", b.figure.Name, strings.ReplaceAll(b.key, "-", " "), strings.Join(said, ", "))
 }
 
-// part adds bounds for the elements that fit.
-func (p *planner) boundPart(l *Limit, f *Figure, key string, node *document.Node, at []condition) {
-	if node.Form != document.Scalar {
-		p.add(node.Span, "wrong-value", "", "%s: a bound with its unit was expected, this is %s", key, node.Form)
+// boundPart adds bounds for the elements that fit.
+func (p *planner) boundPart(b bound, node *document.Node, at conditions) {
+	low, high, ok := p.range2(b, node)
+	if !ok {
 		return
 	}
-	bounds, err := quantity.ParseList(node.Text())
-	if err != nil {
-		p.add(node.Span, "wrong-value", "", "%s: %v", key, err)
-		return
-	}
-	want := 1
-	if key == "between" {
-		want = 2
-	}
-	if len(bounds) != want {
-		p.add(node.Span, "wrong-value", "", "%s: %d bound(s) were expected, %d stand there", key, want, len(bounds))
-		return
-	}
-	numbers := make([]float64, want)
-	for i, b := range bounds {
-		if numbers[i], err = b.In(f.Unit); err != nil {
-			p.add(node.Span, "wrong-dimension", "", "%s: figure %s is in %s: %v", key, f.Name, f.Unit, err)
-			return
-		}
-	}
-	low, high := math.Inf(-1), math.Inf(1)
-	switch key {
-	case "at-most":
-		high = numbers[0]
-	case "at-least":
-		low = numbers[0]
-	default:
-		low, high = numbers[0], numbers[1]
-		if low >= high {
-			p.add(node.Span, "wrong-value", "", "between: the lower bound comes first and is below the upper one")
-			return
-		}
-	}
-	part := limitPart{limit: limits.Between(f.Name, limits.FigureType{Unit: f.Unit, Labels: f.labels}, low, high, l.Require)}
+	f := b.figure
+	part := limitPart{limit: limits.Between(f.Name, limits.FigureType{Unit: f.Unit, Labels: f.labels}, low, high, b.limit.Require)}
 	if len(at) > 0 {
 		part.only = map[string]bool{}
 		for _, element := range f.Elements {
-			if !slices.ContainsFunc(at, func(c condition) bool { return !c.fits(element.Labels) }) {
-				part.only[elementKey(element.Labels, true)] = true
+			if at.fit(element.Labels) {
+				part.only[elementKey(element.Labels)] = true
 			}
 		}
-		if len(part.only) == 0 {
-			p.add(node.Span, "no-element", "", "figure %s has no element there", f.Name)
+		if len(part.only) == 0 && len(f.Elements) > 0 {
+			p.add(at[len(at)-1].span, "no-element", "", "figure %s is not measured at %s", f.Name, at)
 		}
 	}
-	l.parts = append(l.parts, part)
+	b.limit.parts = append(b.limit.parts, part)
+}
+
+// range2 resolves a bound, or both, to numbers in the figure's unit.
+func (p *planner) range2(b bound, node *document.Node) (low, high float64, ok bool) {
+	f := b.figure
+	low, high = math.Inf(-1), math.Inf(1)
+	if b.key != "between" {
+		v, ok := p.value(node, b.key, f.Unit.Dimension(), p.scope)
+		if !ok {
+			return 0, 0, false
+		}
+		if b.key == "at-most" {
+			return low, v.As(f.Unit), true
+		}
+		return v.As(f.Unit), high, true
+	}
+	if node.Form != document.Scalar {
+		p.add(node.Span, "wrong-value", "write LOW HIGH UNIT, as in -2 2 deg/h", "between: two bounds with their unit were expected, this is %s", node.Form)
+		return 0, 0, false
+	}
+	bounds, err := quantity.ParseList(node.Text())
+	switch {
+	case err != nil:
+		p.add(node.Span, "wrong-value", "write LOW HIGH UNIT, as in -2 2 deg/h", "between: %v", err)
+		return 0, 0, false
+	case len(bounds) != 2:
+		p.add(node.Span, "wrong-value", "write LOW HIGH UNIT, as in -2 2 deg/h", "between: two bounds were expected, %d stand there", len(bounds))
+		return 0, 0, false
+	}
+	if d := bounds[0].Dimension(); d != f.Unit.Dimension() {
+		p.add(node.Span, "wrong-dimension", "units that fit: "+fitting(f.Unit.Dimension()), "between: figure %s is %s, this is %s", f.Name, aQuantity(f.Unit.Dimension()), aQuantity(d))
+		return 0, 0, false
+	}
+	low, high = bounds[0].As(f.Unit), bounds[1].As(f.Unit)
+	if low >= high {
+		p.add(node.Span, "wrong-value", "", "between: the lower bound comes first and is below the upper one")
+		return 0, 0, false
+	}
+	return low, high, true
 }

@@ -61,18 +61,21 @@ var guardTable = document.Table{
 	},
 }
 
-// actions are the steps: the first key of a step says which it is.
-var actions = []struct {
+// action is a kind of step.
+type action struct {
 	name  string
 	table *document.Table
-}{
+}
+
+// actions are the steps: the first key of a step says which it is.
+var actions = []action{
 	{"soak", &soakTable}, {"settle", &settleTable}, {"turn", &turnTable}, {"hold", &holdTable}, {"position", &positionTable},
 	{"power", &powerTable}, {"wait", &waitTable}, {"record", &recordTable}, {"stage", &stageTable}, {"ask", &askTable}, {"park", &parkTable},
 }
 
 var (
 	bandKey  = document.Key{Name: "band", Kind: document.Any, Required: true, Doc: "how far from the target it may be"}
-	driftKey = document.Key{Name: "drift", Kind: document.Any, Doc: "how fast it may still change, judged over two minutes"}
+	driftKey = document.Key{Name: "drift", Kind: document.Any, Doc: "how fast it may still change, by the straight line through its last two minutes"}
 	holdKey  = document.Key{Name: "hold", Kind: document.Any, Required: true, Doc: "how long band and drift must be kept without a break"}
 	mostKey  = document.Key{Name: "at-most", Kind: document.Any, Required: true, Doc: "how long the step may take; a wait has an end"}
 
@@ -98,6 +101,9 @@ var (
 		{Name: "for", Kind: document.Any, Doc: "how long: a time, or {turns: N, at-least: TIME} for whole turns of the table"},
 		{Name: "from", Kind: document.Choice, Choices: []string{"power-on"}, Doc: "record from the moment of power-on; with while"},
 		{Name: "while", Kind: document.Any, Doc: "steps during which it records"}}}
+	turnsTable = document.Table{Name: "whole turns", Doc: "a recording over whole turns of the table, so that what repeats every turn averages out", Keys: []document.Key{
+		{Name: "turns", Kind: document.Any, Required: true, Doc: "the recording is a multiple of so many turns"},
+		{Name: "at-least", Kind: document.Any, Required: true, Doc: "and lasts at least so long; at rest just so long"}}}
 	stageTable = document.Table{Name: "stage", Doc: "a named group of steps, once or in a loop", Keys: []document.Key{
 		{Name: "stage", Kind: document.Text, Required: true, Doc: "its name"},
 		{Name: "each", Kind: document.Any, Doc: "{NAME: VALUES}: once for each value, which becomes a label"},
@@ -126,6 +132,7 @@ var figureTable = document.Table{
 		{Name: "measurand", Kind: document.Choice, Choices: []string{"sample", "population"}, Doc: "the statistic of these samples, or the gyro's parameter behind them"},
 		{Name: "scale-factor", Kind: document.Name, Doc: "figure with the measured scale-factor error, for the part of Earth rate"},
 		{Name: "noise", Kind: document.Name, Doc: "recording at rest from which the gyro's noise is taken"},
+		{Name: "noise", Kind: document.Name, Doc: "name of the recordings at rest that tell the gyro's noise, for the uncertainty; if not given, the recording at rest with most labels of the figure's, then the longest"},
 		{Name: "tau", Kind: document.Quantity, Dimension: document.Dim(quantity.Time), Doc: "averaging time"},
 		{Name: "relative-to", Kind: document.Choice, Choices: []string{"range", "reading"}, Doc: "what a nonlinearity is a part of"},
 		{Name: "least", Kind: document.Quantity, Dimension: document.Dim(quantity.AngularRate), Doc: "rates below it are left out of a nonlinearity relative to reading"},
@@ -153,7 +160,16 @@ var limitTable = document.Table{
 var variantTable = document.Table{
 	Name: "variant", Doc: "what differs for one part number",
 	Keys: []document.Key{
-		{Name: "parameters", Kind: document.Any, Doc: "parameters with another value"},
-		{Name: "bounds", Kind: document.Any, Doc: "by clause: at-most, at-least or between with another bound"},
+		{Name: "parameters", Kind: document.Any, Doc: "names of the procedure's parameters, each with another value"},
+		{Name: "bounds", Kind: document.Any, Doc: "by clause: other bounds for the figure of that limit"},
+	},
+}
+
+var boundTable = document.Table{
+	Name: "bound", Doc: "the bound of one clause for one part number, of the same kind as the limit's own",
+	Keys: []document.Key{
+		{Name: "at-most", Kind: document.Any, Doc: "upper bound"},
+		{Name: "at-least", Kind: document.Any, Doc: "lower bound"},
+		{Name: "between", Kind: document.Any, Doc: "lower and upper bound"},
 	},
 }

@@ -1,7 +1,7 @@
 package procedures
 
 import (
-	"fmt"
+	"maps"
 	"math"
 	"regexp"
 	"slices"
@@ -17,17 +17,22 @@ import (
 type scope struct {
 	names  []string
 	values map[string]quantity.Value
+	broken map[string]bool // names that stand there and were refused: using one is no further mistake
 	used   map[string]bool // shared by all scopes of a plan
 }
 
 // with adds a name.
 func (s scope) with(name string, v quantity.Value) scope {
-	inner := scope{names: append(slices.Clone(s.names), name), values: map[string]quantity.Value{}, used: s.used}
-	for n, x := range s.values {
-		inner.values[n] = x
-	}
+	inner := scope{names: append(slices.Clone(s.names), name), values: maps.Clone(s.values), broken: s.broken, used: s.used}
 	inner.values[name] = v
 	return inner
+}
+
+// without adds a name whose values were refused.
+func (s scope) without(name string) scope {
+	s.broken = maps.Clone(s.broken)
+	s.broken[name] = true
+	return s
 }
 
 var variablePattern = regexp.MustCompile(`^[A-Za-z][A-Za-z0-9_-]*$`)
@@ -44,6 +49,10 @@ func (p *planner) value(n *document.Node, key string, want quantity.Dimension, s
 	}
 	if variablePattern.MatchString(n.Text()) {
 		v, known := s.values[n.Text()]
+		if s.broken[n.Text()] {
+			s.used[n.Text()] = true
+			return quantity.Value{}, false
+		}
 		if !known {
 			p.add(n.Span, "unknown-name", source.DidYouMean(n.Text(), s.names), "%s: %q is neither a quantity nor a loop's variable nor a parameter", key, n.Text())
 			return v, false
@@ -72,17 +81,17 @@ func aQuantity(d quantity.Dimension) string {
 	return article + name
 }
 
-// length resolves a time that must not be negative.
-func (p *planner) length(n *document.Node, key string, s scope) time.Duration {
+// length resolves a time that must not be negative. The second result is false when it was refused.
+func (p *planner) length(n *document.Node, key string, s scope) (time.Duration, bool) {
 	v, ok := p.value(n, key, quantity.Time, s)
 	if !ok {
-		return 0
+		return 0, false
 	}
 	if v.SI() < 0 || v.SI() > benchSecondsMax {
 		p.add(n.Span, "wrong-value", "", "%s: %s; a time from 0 to %d days was expected", key, v, benchSecondsMax/86400)
-		return 0
+		return 0, false
 	}
-	return duration(v)
+	return duration(v), true
 }
 
 func duration(v quantity.Value) time.Duration {
@@ -92,6 +101,7 @@ func duration(v quantity.Value) time.Duration {
 // Bounds of a plan.
 const (
 	stepsMax        = 20_000
+	repeatsMax      = 10_000
 	benchSecondsMax = 90 * 86400
 )
 
@@ -101,6 +111,10 @@ func (p *planner) count(n *document.Node, key string, most int, s scope) int {
 		return 0
 	}
 	if n.Form == document.Scalar {
+		if s.broken[n.Text()] {
+			s.used[n.Text()] = true
+			return 0
+		}
 		if v, known := s.values[n.Text()]; known && v.Dimension() == quantity.Ratio && v.Number == math.Trunc(v.Number) && v.Number >= 1 && v.Number <= float64(most) {
 			s.used[n.Text()] = true
 			return int(v.Number)
@@ -114,12 +128,13 @@ func (p *planner) count(n *document.Node, key string, most int, s scope) int {
 }
 
 // parameters reads the procedure's, the variant's and those set for the run.
-func (p *planner) parameters(o Options) scope {
-	s := scope{values: map[string]quantity.Value{}, used: map[string]bool{}}
+func (p *planner) parameters(o Options) {
+	s := scope{values: map[string]quantity.Value{}, broken: map[string]bool{}, used: map[string]bool{}}
 	p.spans = map[string]source.Span{}
 	for _, e := range p.entries(p.procedure.root.Node("parameters"), "parameters") {
 		v, ok := p.parameter(e)
 		if !ok {
+			s.broken[e.Key.Text()] = true
 			continue
 		}
 		p.spans[e.Key.Text()] = e.Key.Span
@@ -127,25 +142,19 @@ func (p *planner) parameters(o Options) scope {
 		p.plan.Parameters = append(p.plan.Parameters, Parameter{Name: e.Key.Text(), Value: v})
 	}
 	for _, e := range p.entries(p.variant.Node("parameters"), "parameters of the variant") {
-		v, ok := p.parameter(e)
-		if ok {
+		if v, ok := p.parameter(e); ok && !s.broken[e.Key.Text()] {
 			p.override(e.Key.Text(), v, e.Key.Span, s, false)
 		}
 	}
-	names := make([]string, 0, len(o.Parameters))
-	for name := range o.Parameters {
-		names = append(names, name)
-	}
-	slices.Sort(names)
-	for _, name := range names {
+	for _, name := range slices.Sorted(maps.Keys(o.Parameters)) {
 		v, err := quantity.Parse(o.Parameters[name])
 		if err != nil {
-			p.add(p.top(), "set", "", "--set %s: %v", name, err)
+			p.add(p.top(), "wrong-value", "", "--set %s: %v", name, err)
 			continue
 		}
 		p.override(name, v, p.top(), s, true)
 	}
-	return s
+	p.scope = s
 }
 
 func (p *planner) parameter(e document.Entry) (quantity.Value, bool) {
@@ -169,13 +178,13 @@ func (p *planner) override(name string, v quantity.Value, at source.Span, s scop
 	i := slices.IndexFunc(p.plan.Parameters, func(q Parameter) bool { return q.Name == name })
 	who := "variant"
 	if set {
-		who = "--set"
+		who = "--set " + name
 	}
 	switch {
 	case i < 0:
 		p.add(at, "unknown-parameter", source.DidYouMean(name, s.names), "%s: the procedure has no parameter %q", who, name)
 	case v.Dimension() != p.plan.Parameters[i].Value.Dimension():
-		p.add(at, "wrong-dimension", "", "%s: parameter %s is %s, %s was given", who, name, aQuantity(p.plan.Parameters[i].Value.Dimension()), fmt.Sprint(v))
+		p.add(at, "wrong-dimension", "", "%s: parameter %s is %s, %s was given", who, name, aQuantity(p.plan.Parameters[i].Value.Dimension()), v)
 	default:
 		p.plan.Parameters[i].Value, p.plan.Parameters[i].Overridden = v, p.plan.Parameters[i].Overridden || set
 		s.values[name] = v
