@@ -158,6 +158,7 @@ func (p *planner) power(m document.Map, st *state) (Action, string) {
 	}
 	if word.Form != document.Scalar || word.Text() != "on" && word.Text() != "off" {
 		p.add(n.Span, "wrong-value", "write on, off, or {off: SLOT}", "power: on or off was expected")
+		st.powered = true // so that this mistake makes no others
 		return Power{}, "power"
 	}
 	on := word.Text() == "on"

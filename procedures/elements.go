@@ -1,6 +1,7 @@
 package procedures
 
 import (
+	"regexp"
 	"slices"
 	"strconv"
 
@@ -16,22 +17,48 @@ type selector struct {
 	visit bool
 }
 
-// selectors reads `per: temperature visit`.
-func (p *planner) selectors(m document.Map, key string) []selector {
+// String is the selector as `per` has it.
+func (s selector) String() string {
+	if s.visit {
+		return s.name + " visit"
+	}
+	return s.name
+}
+
+// selectors reads `per: temperature visit`. The second result is false when it was refused.
+func (p *planner) selectors(m document.Map, key string) ([]selector, bool) {
 	var list []selector
+	sound := m.Has(key) || !m.Stands(key)
 	for _, word := range m.Words(key) {
 		switch {
 		case word == "visit" && len(list) == 0:
-			p.add(m.ValueSpan(key), "wrong-value", "write the label first, as in temperature visit", "%s: visit follows the label whose visits it tells apart", key)
+			p.add(p.wordSpan(m, key, word), "wrong-value", "write the label first, as in temperature visit", "%s: visit follows the label whose visits it tells apart", key)
+			sound = false
 		case word == "visit":
 			list[len(list)-1].visit = true
 		case slices.ContainsFunc(list, func(s selector) bool { return s.name == word }):
 			p.add(m.ValueSpan(key), "duplicate-name", "", "%s: %q stands here twice", key, word)
+			sound = false
 		default:
 			list = append(list, selector{name: word})
 		}
 	}
-	return list
+	return list, sound
+}
+
+// wordSpan is where a word of a key's value stands.
+func (p *planner) wordSpan(m document.Map, key, word string) source.Span {
+	span := m.ValueSpan(key)
+	for _, item := range m.Node(key).Items() {
+		if item.Text() == word {
+			return item.Span
+		}
+	}
+	pattern := regexp.MustCompile(`(?:^|\s)(` + regexp.QuoteMeta(word) + `)(?:\s|$)`)
+	if at := pattern.FindSubmatchIndex(p.plan.File.Text[span.Start:span.End]); at != nil {
+		return p.plan.File.Span(span.Start+at[2], span.Start+at[3])
+	}
+	return span
 }
 
 // condition is one entry of `at:`.
@@ -82,12 +109,11 @@ func (list conditions) fit(labels recording.Labels) bool {
 // elements groups the recordings of a figure that the steps will make.
 func (p *planner) elements(f *Figure, m document.Map) {
 	of := m.Text("of")
-	per, over, at := p.selectors(m, "per"), p.selectors(m, "over"), p.conditions(m)
+	per, perSound := p.selectors(m, "per")
+	over, overSound := p.selectors(m, "over")
+	at := p.conditions(m)
 	for _, s := range per {
-		f.labels = append(f.labels, s.name)
-		if s.visit {
-			f.labels = append(f.labels, s.name+" visit")
-		}
+		f.labels = append(f.labels, s.String())
 	}
 	all := p.made(of)
 	if len(all) == 0 {
@@ -96,7 +122,7 @@ func (p *planner) elements(f *Figure, m document.Map) {
 		}
 		return
 	}
-	if !p.conditionsKnown(m, of, all, at) {
+	if !perSound || !overSound || !p.conditionsKnown(of, all, at) {
 		return
 	}
 	all = slices.DeleteFunc(all, func(i int) bool { return !at.fit(p.plan.expected[i].labels) })
@@ -179,7 +205,7 @@ func elementLabels(labels recording.Labels, per []selector) recording.Labels {
 }
 
 // conditionsKnown checks that the recordings of `at` have its labels, in its dimension.
-func (p *planner) conditionsKnown(m document.Map, of string, all []int, at conditions) bool {
+func (p *planner) conditionsKnown(of string, all []int, at conditions) bool {
 	var known []string
 	for _, i := range all {
 		for _, l := range p.plan.expected[i].labels {
@@ -235,10 +261,10 @@ func (p *planner) labelled(m document.Map, f *Figure, all []int, per, over []sel
 		}
 	}
 	for _, s := range per {
-		check(m.ValueSpan("per"), s.name)
+		check(p.wordSpan(m, "per", s.name), s.name)
 	}
 	for _, s := range over {
-		check(m.ValueSpan("over"), s.name)
+		check(p.wordSpan(m, "over", s.name), s.name)
 	}
 	for _, need := range f.Method.Needs {
 		switch {

@@ -43,7 +43,11 @@ func (p *planner) planFigures() {
 		case is == formula:
 			p.add(f.Span, "wrong-figure", "give one of them", "figure %s is a method of the catalogue (`is`) or computed (`formula`)", f.Name)
 		case is:
-			figure := Figure{Name: f.Name, Span: f.Span}
+			method, ok := reduce.Find(f.Map.Text("is"))
+			if !ok {
+				continue // reported by the table
+			}
+			figure := Figure{Name: f.Name, Method: method, Span: f.Span}
 			p.reduced(&figure, f.Map)
 			p.figures[f.Name] = limits.FigureType{Unit: figure.Unit, Labels: figure.labels}
 			p.plan.Figures = append(p.plan.Figures, figure)
@@ -70,7 +74,7 @@ func (p *planner) unit(f *Figure, m document.Map, want *quantity.Dimension, natu
 		if want == nil || *want != quantity.Ratio {
 			help, in := "state unit, such as unit: deg/h", ""
 			if want != nil {
-				help, in = "units that fit: "+fitting(*want), ", in "+want.String()
+				help, in = "units that fit: "+fitting(*want), ", of "+want.String()
 			}
 			p.add(f.Span, "missing-unit", help, "figure %s needs its unit of measure%s", f.Name, in)
 		}
@@ -103,11 +107,7 @@ func fitting(d quantity.Dimension) string {
 var methodKeys = []string{"is", "of", "per", "at", "pick", "unit"}
 
 func (p *planner) reduced(f *Figure, m document.Map) {
-	method, ok := reduce.Find(m.Text("is"))
-	if !ok {
-		return // reported by the table
-	}
-	f.Method = method
+	method := f.Method
 	dimension := method.Unit.Dimension()
 	f.Unit = p.unit(f, m, &dimension, method.Unit)
 	for _, key := range figureTable.Names() {

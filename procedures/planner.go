@@ -19,16 +19,19 @@ type planner struct {
 	variant   document.Map
 	scope     scope                        // the parameters
 	spans     map[string]source.Span       // of the parameters
+	places    map[finding]bool             // with a mistake of a kind, while loops are unrolled
 	seen      map[string]bool              // recordings, by key
 	figures   map[string]limits.FigureType // worked out so far
 	names     []string                     // of all figures
+	unrolling bool                         // steps are being unrolled: a loop comes by a mistake more than once
+	refused   bool                         // there are mistakes in the steps
 	partial   bool                         // some steps are not in the plan, for mistakes that are reported
 }
 
 // Plan works a procedure out for a part and its parameters: loops unrolled, figures and limits resolved. It finds every
 // mistake that can be found without a bench.
 func (p *Procedure) Plan(o Options) (*Plan, source.List) {
-	w := &planner{procedure: p, seen: map[string]bool{}, figures: map[string]limits.FigureType{}}
+	w := &planner{procedure: p, seen: map[string]bool{}, places: map[finding]bool{}, figures: map[string]limits.FigureType{}}
 	root := p.root
 	w.plan = &Plan{Name: p.Name, Title: root.Text("title"), Revision: root.Text("revision"), Specification: root.Text("specification"),
 		Digest: p.Digest, Text: p.text, File: p.file, Part: o.Part}
@@ -42,7 +45,7 @@ func (p *Procedure) Plan(o Options) (*Plan, source.List) {
 	w.planFigures()
 	w.planLimits()
 	for _, q := range w.plan.Parameters {
-		if !w.scope.used[q.Name] {
+		if !w.scope.used[q.Name] && !w.refused {
 			w.add(w.spans[q.Name], "unused-parameter", "use it in a step or a bound, or leave it out", "parameter %q is used nowhere", q.Name)
 		}
 	}
@@ -51,6 +54,18 @@ func (p *Procedure) Plan(o Options) (*Plan, source.List) {
 		return nil, w.list
 	}
 	return w.plan, nil
+}
+
+// add reports a mistake; while loops are unrolled, one of a kind for each place.
+func (p *planner) add(span source.Span, code, help, format string, args ...any) {
+	if !p.unrolling {
+		p.findings.add(span, code, help, format, args...)
+		return
+	}
+	if key := (finding{span, code}); !p.places[key] {
+		p.places[key] = true
+		p.findings.add(span, code, help, format, args...)
+	}
 }
 
 // top is the place of what concerns the document as a whole.

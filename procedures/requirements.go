@@ -43,7 +43,7 @@ func (p *planner) planLimits() {
 	for _, e := range p.entries(p.variant.Node("bounds"), "bounds") {
 		switch {
 		case !slices.Contains(clauses, e.Key.Text()):
-			p.add(e.Key.Span, "unknown-clause", source.DidYouMean(e.Key.Text(), clauses), "no limit has the clause %s", e.Key.Text())
+			p.add(e.Key.Span, "unknown-clause", "", "no limit has the clause %s", e.Key.Text())
 		case !slices.Contains(structured, e.Key.Text()):
 			p.add(e.Key.Span, "wrong-limit", "write the limit with figure, or use a parameter", "the limit of clause %s is an expression; a variant gives other bounds to a figure's", e.Key.Text())
 		}
@@ -128,7 +128,7 @@ func (p *planner) bounded(l *Limit, m document.Map) {
 		return
 	}
 	for _, c := range b.at {
-		if !slices.Contains(b.figure.labels, c.name) {
+		if !b.figure.over(c.name) {
 			p.noFigureLabel(c.span, b.figure, c.name)
 			return
 		}
@@ -154,9 +154,17 @@ func (list conditions) String() string {
 	return strings.Join(parts, ", ")
 }
 
+// over says whether the figure is a series over a label.
+func (f *Figure) over(name string) bool {
+	return slices.Contains(f.labels, name) || slices.Contains(f.labels, name+" visit")
+}
+
 // noFigureLabel reports a label that a figure is no series over.
 func (p *planner) noFigureLabel(at source.Span, f *Figure, name string) {
-	labels := slices.DeleteFunc(slices.Clone(f.labels), func(l string) bool { return strings.HasSuffix(l, " visit") })
+	var labels []string
+	for _, l := range f.labels {
+		labels = append(labels, strings.TrimSuffix(l, " visit"))
+	}
 	help := source.DidYouMean(name, labels)
 	if len(labels) == 0 {
 		help = "it is a single figure; per makes it a series"
@@ -187,7 +195,7 @@ func (p *planner) boundsPer(b bound, m document.Map, node *document.Node) {
 	if per == "" {
 		return // refused by the table
 	}
-	if !slices.Contains(b.figure.labels, per) {
+	if !b.figure.over(per) {
 		p.noFigureLabel(m.ValueSpan("per"), b.figure, per)
 		return
 	}

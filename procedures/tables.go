@@ -101,7 +101,7 @@ var (
 		{Name: "for", Kind: document.Any, Doc: "how long: a time, or {turns: N, at-least: TIME} for whole turns of the table"},
 		{Name: "from", Kind: document.Choice, Choices: []string{"power-on"}, Doc: "record from the moment of power-on; with while"},
 		{Name: "while", Kind: document.Any, Doc: "steps during which it records"}}}
-	turnsTable = document.Table{Name: "whole turns", Doc: "a recording over whole turns of the table, so that what repeats every turn averages out", Keys: []document.Key{
+	turnsTable = document.Table{Name: "time in turns", Doc: "a recording over whole turns of the table, so that what repeats every turn averages out", Keys: []document.Key{
 		{Name: "turns", Kind: document.Any, Required: true, Doc: "the recording is a multiple of so many turns"},
 		{Name: "at-least", Kind: document.Any, Required: true, Doc: "and lasts at least so long; at rest just so long"}}}
 	stageTable = document.Table{Name: "stage", Doc: "a named group of steps, once or in a loop", Keys: []document.Key{

@@ -30,10 +30,14 @@ type state struct {
 // unroll turns the document's steps into the plan's.
 func (p *planner) unroll() {
 	st := state{rate: quantity.Of(0, quantity.MustUnit("deg/s"))}
+	before := len(p.list)
+	p.unrolling = true
 	p.plan.Steps = p.steps(p.procedure.root.Node("steps"), around{scope: p.scope}, &st)
 	if st.full() {
 		p.add(p.procedure.root.KeySpan("steps"), "too-many-steps", "", "the loops make more than %d steps", stepsMax)
 	}
+	p.unrolling = false
+	p.refused = len(p.list) > before
 	p.partial = st.partial || st.full() || !p.procedure.root.Has("steps")
 }
 
@@ -125,6 +129,9 @@ func (p *planner) each(m document.Map, a around, body *document.Node, st *state)
 	n := m.Node("each")
 	if n.Form != document.Mapping || len(n.Entries()) != 1 || n.Entries()[0].Value.Form != document.Scalar {
 		p.add(n.Span, "wrong-value", "write {rate: 0 50 deg/s}", "each: one name with its values was expected")
+		for _, e := range n.Entries() {
+			a.scope = a.scope.without(e.Key.Text())
+		}
 		return p.once("", a, body, st)
 	}
 	name, list := n.Entries()[0].Key, n.Entries()[0].Value
