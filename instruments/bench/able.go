@@ -2,7 +2,6 @@ package bench
 
 import (
 	"slices"
-	"strings"
 
 	"proofrate/instruments"
 	"proofrate/instruments/profile"
@@ -21,7 +20,8 @@ type abilities struct {
 }
 
 func abilitiesOf(p *profile.Profile) abilities {
-	return abilities{roles: p.Roles, readings: p.Readings, positions: p.CanPosition, oscillates: p.CanOscillate, supplyChannels: p.SupplyChannels, channels: p.Channels, sampleRate: p.SampleRate, frameCounter: p.FrameCounter}
+	return abilities{roles: p.Roles, readings: p.Readings, positions: p.CanPosition, oscillates: p.CanOscillate,
+		supplyChannels: p.SupplyChannels, channels: p.Channels, sampleRate: p.SampleRate, frameCounter: p.FrameCounter}
 }
 
 // all lists the readings of every role of an instrument; a meter's carries the instrument's name.
@@ -35,13 +35,4 @@ func (a abilities) all(name string) []string {
 	}
 	slices.Sort(all)
 	return slices.Compact(all)
-}
-
-// unit is a reading's; of a meter's value its profile's.
-func (a abilities) unit(reading string) quantity.Unit {
-	if strings.HasSuffix(reading, ".value") {
-		return quantity.Unit{}
-	}
-	kind, _ := instruments.ReadingOf(reading)
-	return kind.Unit
 }

@@ -3,7 +3,6 @@ package bench
 import (
 	"fmt"
 	"net"
-	"path/filepath"
 	"slices"
 	"strings"
 	"time"
@@ -11,6 +10,7 @@ import (
 	"proofrate/instruments"
 	"proofrate/instruments/profile"
 	"proofrate/limits/document"
+	"proofrate/limits/quantity"
 	"proofrate/limits/source"
 )
 
@@ -61,16 +61,11 @@ func (l *loader) profile(m document.Map) *profile.Profile {
 			l.wrong.Addf(span, "unknown-profile", source.DidYouMean(name, profile.ShippedNames()), "there is no shipped profile %q", name)
 			return nil
 		}
-		path := name
-		if !filepath.IsAbs(path) {
-			path = filepath.Join(filepath.Dir(l.file.Name), name)
-		}
 		var err error
-		if text, err = l.read(path); err != nil {
+		if text, err = l.read(name); err != nil {
 			l.wrong.Addf(span, "unreadable-profile", "give the path from the bench file's folder", "profile %s: %v", name, err)
 			return nil
 		}
-		name = path
 	}
 	p, file, wrong := profile.Load(name, text)
 	if len(wrong) > 0 {
@@ -138,12 +133,26 @@ func (l *loader) calibration(m document.Map, i *instrument, seen map[string]sour
 	seen[c.Reading] = m.ValueSpan("of")
 	for _, key := range []string{"correction", "U", "drift"} {
 		if v := m.Quantity(key); m.Has(key) {
-			if fits, want := ratioOrOwn(v, i.able.unit(c.Reading).Dimension()); !fits {
+			if fits, want := ratioOrOwn(v.Dimension(), c.Reading); !fits {
 				l.wrong.Addf(m.ValueSpan(key), "wrong-unit", "expected: "+want, "%s of %s cannot be %v, which is a %v", key, c.Reading, v, v.Dimension())
 			}
 		}
 	}
 	return c
+}
+
+// ratioOrOwn says whether a calibration's value is relative or in the reading's own dimension. Of an absolute
+// temperature a relative value has no meaning, and its own is a difference; a meter may read anything.
+func ratioOrOwn(d quantity.Dimension, reading string) (fits bool, want string) {
+	kind, _ := instruments.ReadingOf(reading)
+	own := kind.Unit.Dimension()
+	switch {
+	case kind.Unit == quantity.Unit{} && strings.HasSuffix(reading, ".value"):
+		return true, ""
+	case own == quantity.Temperature:
+		return d == quantity.TemperatureDifference, quantity.TemperatureDifference.String()
+	}
+	return d == quantity.Ratio || d == own, "ratio or " + own.String()
 }
 
 func (l *loader) dates(m document.Map) {

@@ -12,17 +12,20 @@ import (
 	"proofrate/instruments"
 	"proofrate/instruments/virtual"
 	"proofrate/limits/document"
-	"proofrate/limits/quantity"
 	"proofrate/limits/source"
 )
 
 // Loaded is a bench file that has been found sound.
 type Loaded struct {
 	Description *instruments.Description
-	instruments []*instrument // in the order of the file
+	Gyros       map[instruments.SlotID]Gyro // of a virtual bench; empty where people put the gyros in
+	instruments []*instrument               // in the order of the file
 	meters      map[instruments.SlotID][]string
 	world       *virtual.Config // without its seed; nil if the links lead out of the program
 }
+
+// Gyro is which gyro sits in a slot of a virtual bench.
+type Gyro struct{ Part, Serial string }
 
 // loader goes through a decoded bench file and notes all that is wrong.
 type loader struct {
@@ -31,27 +34,28 @@ type loader struct {
 	wrong       source.List
 	description *instruments.Description
 	instruments []*instrument
+	gyros       map[instruments.SlotID]Gyro
 	meters      map[instruments.SlotID][]string
 	feeds       map[string]source.Span // supply and channel, gyro: to the slot that has it
 	misplaced   bool                   // some role has the wrong instrument: what follows from that is not said
 }
 
-// Load reads a bench file with no hardware touched. A profile that is not shipped is read with read, from the bench
-// file's folder. Loaded is nil if anything is wrong.
+// Load reads a bench file with no hardware touched. A profile that is not shipped is read with read, which is given the
+// path as the bench file has it: from the bench file's own folder. Loaded is nil if anything is wrong.
 func Load(name string, text []byte, read func(path string) ([]byte, error)) (*Loaded, *source.File, source.List) {
 	file, root, wrong := document.Read(name, text)
 	if root == nil {
 		return nil, file, wrong
 	}
 	digest := sha256.Sum256(text)
-	l := &loader{file: file, read: read, wrong: wrong, feeds: map[string]source.Span{}, meters: map[instruments.SlotID][]string{},
+	l := &loader{file: file, read: read, wrong: wrong, feeds: map[string]source.Span{}, meters: map[instruments.SlotID][]string{}, gyros: map[instruments.SlotID]Gyro{},
 		description: &instruments.Description{File: name, Text: text, Digest: "sha256:" + hex.EncodeToString(digest[:]), Pace: 1}}
 	world := l.bench(document.Decode(root, Table, &l.wrong))
 	if len(l.wrong) > 0 {
 		l.wrong.Sort()
 		return nil, file, l.wrong
 	}
-	return &Loaded{l.description, l.instruments, l.meters, world}, file, nil
+	return &Loaded{l.description, l.gyros, l.instruments, l.meters, world}, file, nil
 }
 
 func (l *loader) bench(m document.Map) *virtual.Config {
@@ -273,15 +277,4 @@ func (l *loader) named(name string) *instrument {
 		}
 	}
 	return nil
-}
-
-// ratioOrOwn says whether a calibration's value is relative or in the reading's own dimension. Of an absolute
-// temperature a relative value has no meaning, and its own is a difference.
-func ratioOrOwn(v quantity.Value, reading quantity.Dimension) (fits bool, want string) {
-	switch d := v.Dimension(); reading {
-	case quantity.Temperature:
-		return d == quantity.TemperatureDifference, quantity.TemperatureDifference.String()
-	default:
-		return d == quantity.Ratio || d == reading, "ratio or " + reading.String()
-	}
 }

@@ -89,7 +89,7 @@ func TestAllMistakesInOnePass(t *testing.T) {
 	text := base(t)
 	for _, change := range [][2]string{
 		{"latitude: 47.66 deg", "latitude: 147.66 deg"}, {"  axis: up", "  axis: upp"}, {"  creep: ", "  creap: "},
-		{"U: 20 ppm", "U: 20 mV"}, {"channel: 2", "channel: 5"}, {"B: {population: optical", "B: {population: optikal"},
+		{"U: 20 ppm", "U: 20 mV"}, {"channel: 2", "channel: 5"}, {"population: optical, overrides", "population: optikal, overrides"},
 	} {
 		text = strings.Replace(text, change[0], change[1], 1)
 	}
@@ -166,14 +166,14 @@ func TestOddInput(t *testing.T) {
 	}
 }
 
-func TestProfileOfAFileIsReadFromTheBenchesFolder(t *testing.T) {
-	text := strings.Replace(base(t), "profile: supply-scpi", "profile: supply.yaml", 1)
+func TestProfileOfAFileIsAskedForAsItIsNamed(t *testing.T) {
+	text := strings.Replace(base(t), "profile: supply-scpi", "profile: parts/supply.yaml", 1)
 	var asked []string
 	_, _, wrong := Load("station/bench.yaml", []byte(text), func(path string) ([]byte, error) {
 		asked = append(asked, path)
 		return nil, fs.ErrNotExist
 	})
-	if len(asked) != 1 || asked[0] != filepath.Join("station", "supply.yaml") || len(wrong) != 1 {
+	if len(asked) != 1 || asked[0] != "parts/supply.yaml" || len(wrong) != 1 {
 		t.Errorf("asked for %v; %v", asked, wrong.Err())
 	}
 }

@@ -7,6 +7,7 @@ import (
 
 	"proofrate/instruments"
 	"proofrate/instruments/link"
+	"proofrate/instruments/profile"
 	"proofrate/instruments/virtual"
 )
 
@@ -33,19 +34,31 @@ func (o *Opened) open(ctx context.Context, l *Loaded, seed uint64) error {
 	if err != nil {
 		return err
 	}
-	links := map[string]link.Link{}
+	wired := map[string]wire{}
 	for _, i := range l.instruments {
 		at, err := connect(ctx, i)
 		if err != nil {
 			return failed("open", i.name, err)
 		}
 		o.links = append(o.links, at)
-		links[i.name] = at
+		// A profile shares what it knows of a link among its drivers, so that each opening has its own.
+		own, _, wrong := profile.Load(i.profile.Name, i.profile.Text)
+		if err := wrong.Err(); err != nil {
+			return failed("open", i.name, err)
+		}
+		wired[i.name] = wire{i.name, at, own}
 	}
-	if err := o.drivers(l, links); err != nil {
+	if err := o.drivers(l, wired); err != nil {
 		return err
 	}
 	return o.identify(ctx, l)
+}
+
+// wire is an instrument at its open link.
+type wire struct {
+	name    string
+	link    link.Link
+	profile *profile.Profile
 }
 
 // connector is how the links of this bench are opened; it starts the bench's clock.
@@ -71,39 +84,35 @@ func (o *Opened) connector(l *Loaded, seed uint64) (func(context.Context, *instr
 }
 
 // drivers makes the instruments of the bench, one a role that is filled.
-func (o *Opened) drivers(l *Loaded, links map[string]link.Link) error {
+func (o *Opened) drivers(l *Loaded, wired map[string]wire) error {
 	d := l.Description
-	named := func(name string) (*instrument, link.Link) {
-		at := slices.IndexFunc(l.instruments, func(i *instrument) bool { return i.name == name })
-		return l.instruments[at], links[name]
-	}
 	var err error
 	if d.Table != nil {
-		i, at := named(d.Table.Instrument)
-		if o.Table, err = i.profile.Table(at, i.name); err != nil {
-			return failed("make the table's driver", i.name, err)
+		w := wired[d.Table.Instrument]
+		if o.Table, err = w.profile.Table(w.link, w.name); err != nil {
+			return failed("make the table's driver", w.name, err)
 		}
 	}
 	if d.Chamber != nil {
-		i, at := named(d.Chamber.Instrument)
-		if o.Chamber, err = i.profile.Chamber(at, i.name); err != nil {
-			return failed("make the chamber's driver", i.name, err)
+		w := wired[d.Chamber.Instrument]
+		if o.Chamber, err = w.profile.Chamber(w.link, w.name); err != nil {
+			return failed("make the chamber's driver", w.name, err)
 		}
 	}
 	for _, s := range d.Slots {
 		slot := instruments.Slot{ID: s.ID, Meters: map[string]instruments.Instrument{}}
-		i, at := named(s.Gyro)
-		if slot.Gyro, err = i.profile.Gyro(at, i.name); err != nil {
-			return failed("make the gyro's driver", i.name, err)
+		w := wired[s.Gyro]
+		if slot.Gyro, err = w.profile.Gyro(w.link, w.name); err != nil {
+			return failed("make the gyro's driver", w.name, err)
 		}
-		i, at = named(s.Supply)
-		if slot.Supply, err = i.profile.Supply(at, i.name, s.SupplyChannel); err != nil {
-			return failed("make the supply's driver", i.name, err)
+		w = wired[s.Supply]
+		if slot.Supply, err = w.profile.Supply(w.link, w.name, s.SupplyChannel); err != nil {
+			return failed("make the supply's driver", w.name, err)
 		}
 		for _, name := range l.meters[s.ID] {
-			i, at = named(name)
-			if slot.Meters[name], err = i.profile.Meter(at, i.name); err != nil {
-				return failed("make the meter's driver", i.name, err)
+			w = wired[name]
+			if slot.Meters[name], err = w.profile.Meter(w.link, w.name); err != nil {
+				return failed("make the meter's driver", w.name, err)
 			}
 		}
 		o.Slots = append(o.Slots, slot)

@@ -85,6 +85,8 @@ var virtualGyroTable = &document.Table{
 	Name: "virtual gyro",
 	Doc:  "the virtual gyro in one slot",
 	Keys: []document.Key{
+		{Name: "part", Kind: document.Text, Required: true, Doc: "its part number"},
+		{Name: "serial", Kind: document.Text, Required: true, Doc: "its serial number"},
 		{Name: "population", Kind: document.Text, Required: true, Doc: "from which it is drawn"},
 		{Name: "overrides", Kind: document.MapOf, Of: overridesTable, Doc: "parameters that are set and not drawn: {nonlinearity: 180 ppm}"},
 	},

@@ -110,6 +110,7 @@ func (l *loader) virtualGyro(named document.Named, config *virtual.Config) {
 		}
 	}
 	config.Gyros[slot] = setup
+	l.gyros[slot] = Gyro{m.Text("part"), m.Text("serial")}
 	if m.Has("population") {
 		l.population(m, slot)
 	}
