@@ -131,7 +131,6 @@ var figureTable = document.Table{
 		{Name: "unit", Kind: document.Text, Doc: "unit of measure; of a ratio, ppm or %"},
 		{Name: "measurand", Kind: document.Choice, Choices: []string{"sample", "population"}, Doc: "the statistic of these samples, or the gyro's parameter behind them"},
 		{Name: "scale-factor", Kind: document.Name, Doc: "figure with the measured scale-factor error, for the part of Earth rate"},
-		{Name: "noise", Kind: document.Name, Doc: "recording at rest from which the gyro's noise is taken"},
 		{Name: "noise", Kind: document.Name, Doc: "name of the recordings at rest that tell the gyro's noise, for the uncertainty; if not given, the recording at rest with most labels of the figure's, then the longest"},
 		{Name: "tau", Kind: document.Quantity, Dimension: document.Dim(quantity.Time), Doc: "averaging time"},
 		{Name: "relative-to", Kind: document.Choice, Choices: []string{"range", "reading"}, Doc: "what a nonlinearity is a part of"},
