@@ -13,6 +13,7 @@ type Bench struct {
 	AxisUp     float64 // component of the gyro's input axis on local up, sense included
 	AxisNorth  float64
 	AxisEast   float64
+	EarthRate  float64 // rad/s on the input axis, where it is given instead of an attitude
 	AxisU      float64 // rad: standard uncertainty of the table axis' direction, each of two directions
 	AttitudeU  float64 // rad: of the gyro's input axis to the table's
 	Sense      float64 // +1 or -1: the input axis along or against the table's

@@ -176,6 +176,6 @@ func meanAndScatter(values []float64) (mean, scatter float64) {
 //
 // A tilt by a small angle toward or away from the Earth's axis changes Omega_n by the angle times Omega_across.
 func (b Bench) earth() (along, across float64) {
-	along = earthRate * (b.AxisNorth*math.Cos(b.Latitude) + b.AxisUp*math.Sin(b.Latitude))
+	along = b.EarthRate + earthRate*(b.AxisNorth*math.Cos(b.Latitude)+b.AxisUp*math.Sin(b.Latitude))
 	return along, math.Sqrt(math.Max(earthRate*earthRate-along*along, 0))
 }

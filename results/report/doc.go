@@ -1,0 +1,2 @@
+// Package report writes what people read of a run.
+package report
