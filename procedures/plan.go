@@ -162,7 +162,6 @@ type Figure struct {
 
 	options     reduce.Options
 	scaleFactor string // figure
-	noise       string // recording
 	formula     *limits.Formula
 	labels      []string // that index the series
 }
