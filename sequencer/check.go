@@ -8,6 +8,7 @@ import (
 
 	"proofrate/instruments/bench"
 	"proofrate/instruments/profile"
+	yaml "proofrate/limits/document"
 	"proofrate/limits/source"
 	"proofrate/procedures"
 )
@@ -52,7 +53,16 @@ mistake with its place. With --bench a procedure is also held against what that 
 	return c
 }
 
-// kind of document, told by its first key: the reader of each reports what is wrong with it.
+// firstKey is the first key of a document: bench, profile or procedure. What is no document has none.
+func firstKey(name string, text []byte) string {
+	_, root, _ := yaml.Read(name, text)
+	if root == nil || len(root.Entries()) == 0 {
+		return ""
+	}
+	return root.Entries()[0].Key.Text()
+}
+
+// checkOne tells the kind of a document by its first key and has its reader report what is wrong.
 func checkOne(cmd *cobra.Command, name, benchName string, o procedures.Options, quiet bool) (source.List, []*source.File, error) {
 	shipped := func(name string) ([]byte, bool) {
 		for _, from := range []func(string) ([]byte, bool){procedures.Shipped, bench.Shipped, profile.Shipped} {
@@ -72,7 +82,7 @@ func checkOne(cmd *cobra.Command, name, benchName string, o procedures.Options, 
 			fmt.Fprintf(cmd.OutOrStdout(), format+"\n", args...)
 		}
 	}
-	switch firstKey(text) {
+	switch firstKey(name, text) {
 	case "bench", "station":
 		loaded, file, problems, err := loadBench(name)
 		if err != nil || len(problems) > 0 {

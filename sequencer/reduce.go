@@ -89,7 +89,7 @@ func reduceFile(cmd *cobra.Command, name string, f reduceFlags) error {
 	}
 	if f.curve != "" {
 		for _, p := range reduce.AllanCurve(r, curvePoints(r.Len())) {
-			out.Curve = append(out.Curve, curvePoint(p))
+			out.Curve = append(out.Curve, curvePoint{p.Tau, p.Deviation, p.Low, p.High, p.N})
 		}
 	}
 	if f.json {
