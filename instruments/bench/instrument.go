@@ -44,6 +44,10 @@ func (l *loader) instrument(named document.Named) {
 	if m.Has("link") {
 		i.link = l.link(m)
 	}
+	if i.link.scheme == "serial" && i.profile != nil && i.profile.Serial.Baud == 0 {
+		l.wrong.Addf(i.linkSpan, "no-serial-settings", "add serial: to the profile, or link the instrument by TCP",
+			"profile %s does not say how a serial port is set", i.profile.Name)
+	}
 	seen := map[string]source.Span{}
 	for _, entry := range m.List("calibrations") {
 		d.Calibrations = append(d.Calibrations, l.calibration(entry, i, seen))

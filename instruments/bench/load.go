@@ -22,6 +22,8 @@ type Loaded struct {
 	instruments []*instrument               // in the order of the file
 	meters      map[instruments.SlotID][]string
 	world       *virtual.Config // without its seed; nil if the links lead out of the program
+	file        *source.File
+	worldSpan   source.Span // of the virtual section
 }
 
 // Gyro is which gyro sits in a slot of a virtual bench.
@@ -50,12 +52,15 @@ func Load(name string, text []byte, read func(path string) ([]byte, error)) (*Lo
 	digest := sha256.Sum256(text)
 	l := &loader{file: file, read: read, wrong: wrong, feeds: map[string]source.Span{}, meters: map[instruments.SlotID][]string{}, gyros: map[instruments.SlotID]Gyro{},
 		description: &instruments.Description{File: name, Text: text, Digest: "sha256:" + hex.EncodeToString(digest[:]), Pace: 1}}
-	world := l.bench(document.Decode(root, Table, &l.wrong))
+	m := document.Decode(root, Table, &l.wrong)
+	world := l.bench(m)
 	if len(l.wrong) > 0 {
 		l.wrong.Sort()
 		return nil, file, l.wrong
 	}
-	return &Loaded{l.description, l.gyros, l.instruments, l.meters, world}, file, nil
+	section := m.KeySpan("virtual")
+	section.End = m.ValueSpan("virtual").End
+	return &Loaded{l.description, l.gyros, l.instruments, l.meters, world, file, section}, file, nil
 }
 
 func (l *loader) bench(m document.Map) *virtual.Config {

@@ -3,6 +3,7 @@ package bench
 import (
 	"context"
 	"errors"
+	"fmt"
 	"slices"
 
 	"proofrate/instruments"
@@ -61,12 +62,20 @@ type wire struct {
 	profile *profile.Profile
 }
 
+// World makes the virtual world behind a bench; the seed gives everything that is drawn.
+func World(l *Loaded, seed uint64) (*virtual.World, error) {
+	if l.world == nil {
+		return nil, fmt.Errorf("bench %s is no virtual one", l.Description.Name)
+	}
+	config := *l.world
+	config.Seed = seed
+	return virtual.New(config)
+}
+
 // connector is how the links of this bench are opened; it starts the bench's clock.
 func (o *Opened) connector(l *Loaded, seed uint64) (func(context.Context, *instrument) (link.Link, error), error) {
 	if l.world != nil {
-		config := *l.world
-		config.Seed = seed
-		world, err := virtual.New(config)
+		world, err := World(l, seed)
 		if err != nil {
 			return nil, err
 		}
