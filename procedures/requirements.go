@@ -137,11 +137,19 @@ func (p *planner) bounded(l *Limit, m document.Map) {
 		p.boundsPer(b, m, node)
 		return
 	}
-	l.Require = fmt.Sprintf("%s %s %s", name, strings.ReplaceAll(b.key, "-", " "), node.Text())
+	l.Require = fmt.Sprintf("%s %s %s", name, strings.ReplaceAll(b.key, "-", " "), inWords(b.key, node.Text()))
 	if len(b.at) > 0 {
 		l.Require += " at " + b.at.String()
 	}
 	p.boundPart(b, node, b.at)
+}
+
+// inWords says the two bounds of a between as people do: -2 and 2 deg/h.
+func inWords(key, bounds string) string {
+	if key != "between" {
+		return bounds
+	}
+	return strings.Replace(bounds, " ", " and ", 1)
 }
 
 func (list conditions) String() string {

@@ -1,7 +1,6 @@
 package results
 
 import (
-	"encoding/json"
 	"math"
 	"time"
 
@@ -224,14 +223,8 @@ func (t *trialEvidence) stored(file string, s recording.Seal) {
 	}
 }
 
-// labelText is labels as the tables have them.
+// labelText is labels in words, as the tables have them.
 func labelText(list []recording.LabelJSON) string {
-	if len(list) == 0 {
-		return ""
-	}
-	p, err := json.Marshal(list)
-	if err != nil {
-		panic("results: " + err.Error()) // strings and finite numbers
-	}
-	return string(p)
+	_, words := told(list)
+	return words
 }

@@ -8,6 +8,7 @@ import (
 	"slices"
 	"strings"
 	"text/tabwriter"
+	"time"
 
 	"proofrate/limits/quantity"
 	"proofrate/results"
@@ -24,8 +25,8 @@ var rank = map[string]int{"accept": 1, "undecided": 2, "void": 3, "reject": 4}
 func Run(w io.Writer, r *results.RunReport, at Place) error {
 	p := &page{w: w}
 	p.linef("run %s", r.Run)
-	p.linef("%s revision %s%s on bench %s, operator %s, %s", r.Procedure.Name, r.Procedure.Revision, of(r.Specification), r.Bench, r.Operator, r.Started)
-	ended := r.Outcome
+	p.linef("%s revision %s%s on bench %s, operator %s, started %s", r.Procedure.Name, r.Procedure.Revision, of(r.Specification), r.Bench, r.Operator, seconds(r.Started))
+	ended := strings.ReplaceAll(r.Outcome, "-", " ")
 	if r.Reason != "" {
 		ended += ": " + r.Reason
 	}
@@ -51,6 +52,15 @@ func of(specification string) string {
 		return ""
 	}
 	return " to " + specification
+}
+
+// seconds cuts a time of the wall to its seconds.
+func seconds(started string) string {
+	t, err := time.Parse(time.RFC3339Nano, started)
+	if err != nil {
+		return started
+	}
+	return t.UTC().Format("2006-01-02 15:04:05 UTC")
 }
 
 func hours(s float64) string {
@@ -86,12 +96,12 @@ func summary(t results.TrialReport) string {
 	return strings.Join(clauses, ", ")
 }
 
-// trial writes a gyro's limits and reasons.
+// trial writes a gyro's limits, of each the element that came out worst, and why those that are not met are not.
 func (p *page) trial(t results.TrialReport) {
 	p.linef("slot %s  %s %s  %s", t.Slot, t.Part, t.Serial, strings.ToUpper(t.Verdict))
 	var b strings.Builder
 	table := tabwriter.NewWriter(&b, 0, 0, 2, ' ', 0)
-	fmt.Fprintln(table, "  clause\trequirement\tworst of\tmargin\tu\tverdict")
+	fmt.Fprintln(table, "  clause\trequirement\tfound, worst of n\tn\tmargin\tverdict")
 	for _, limit := range byLimit(t.Judgements) {
 		worst := limit[0]
 		for _, j := range limit[1:] {
@@ -99,15 +109,7 @@ func (p *page) trial(t results.TrialReport) {
 				worst = j
 			}
 		}
-		margin, u := "-", "-"
-		if worst.Margin != nil && worst.UMargin != nil {
-			margin = withUnit(quantity.Format(*worst.Margin, *worst.UMargin), worst.Unit)
-			u = withUnit(quantity.Format(*worst.UMargin, *worst.UMargin), worst.Unit)
-			if *worst.UMargin == 0 {
-				u = "-"
-			}
-		}
-		fmt.Fprintf(table, "  %s\t%s\t%d\t%s\t%s\t%s\n", worst.Clause, worst.Require, len(limit), margin, u, worst.Verdict)
+		fmt.Fprintf(table, "  %s\t%s\t%s\t%d\t%s\t%s\n", worst.Clause, worst.Require, found(worst), len(limit), margin(worst), worst.Verdict)
 	}
 	table.Flush()
 	for _, line := range strings.Split(strings.TrimRight(b.String(), "\n"), "\n") {
@@ -115,9 +117,19 @@ func (p *page) trial(t results.TrialReport) {
 	}
 	for _, j := range t.Judgements {
 		if j.Verdict != "accept" {
-			p.linef("  %s: clause %s%s: %s requires %s, %s%s", strings.ToUpper(j.Verdict), j.Clause, where(j.Place), "it", j.Require, j.Reason, odds(j))
+			p.linef("  %s by clause %s%s: %s; required is %s%s", strings.ToUpper(j.Verdict), j.Clause, where(j.Place), found(j), j.Require, odds(j))
 		}
 	}
+}
+
+// found is the figures that a judgement rests on, or why it is void.
+func found(j results.JudgementReport) string { return strings.TrimPrefix(j.Reason, "with ") }
+
+func margin(j results.JudgementReport) string {
+	if j.Margin == nil || j.UMargin == nil || *j.UMargin == 0 {
+		return "-"
+	}
+	return withUnit(quantity.Format(*j.Margin, *j.UMargin), j.Unit)
 }
 
 func withUnit(number, unit string) string {
@@ -134,11 +146,18 @@ func where(place string) string {
 	return " at " + place
 }
 
+// odds says how sure a verdict is.
 func odds(j results.JudgementReport) string {
-	if j.Probability == nil || j.Rule == "simple" {
+	switch p := j.Probability; {
+	case p == nil || j.Rule == "simple":
 		return ""
+	case *p < 0.001:
+		return "; conforms with a probability below 0.001"
+	case *p > 0.999:
+		return "; conforms with a probability above 0.999"
+	default:
+		return fmt.Sprintf("; conforms with a probability of %.3f", *p)
 	}
-	return fmt.Sprintf("; conforms with a probability of %.3g", *j.Probability)
 }
 
 func less(a, b results.JudgementReport) bool {
