@@ -205,14 +205,15 @@ func (p *planner) expect(m document.Map, a around, st *state, lasts time.Duratio
 	if e.name == "" {
 		return
 	}
-	if p.seen[e.key()] {
+	key := e.key()
+	if p.seen[key] {
 		with := "no labels"
 		if len(a.labels) > 0 {
 			with = "the same labels, " + a.labels.String()
 		}
 		p.add(e.span, "duplicate-recording", "give it another name, or a loop with a label", "a second recording %q with %s", e.name, with)
 	}
-	p.seen[e.key()] = true
+	p.seen[key] = true
 	p.plan.expected = append(p.plan.expected, e)
 }
 

@@ -1,9 +1,9 @@
 package procedures
 
 import (
-	"fmt"
 	"regexp"
 	"slices"
+	"strconv"
 	"strings"
 
 	"proofrate/limits"
@@ -17,14 +17,17 @@ import (
 // elementKey is the key of labels, which limits use for an element of a series: nominal values, and visits where they
 // are told apart.
 func elementKey(labels recording.Labels) string {
-	parts := make([]string, len(labels))
+	var b strings.Builder
 	for i, l := range labels {
-		parts[i] = l.Name + " " + l.Value.String()
+		if i > 0 {
+			b.WriteString(", ")
+		}
+		b.WriteString(l.Name + " " + l.Value.String())
 		if l.Visit > 0 {
-			parts[i] += fmt.Sprintf(" (visit %d)", l.Visit)
+			b.WriteString(" (visit " + strconv.Itoa(l.Visit) + ")")
 		}
 	}
-	return strings.Join(parts, ", ")
+	return b.String()
 }
 
 // planFigures works out every figure: method or formula, unit, elements and their recordings. A figure follows those

@@ -40,11 +40,14 @@ func Load(name string, text []byte) (*Procedure, *source.File, source.List) {
 	}
 	var found findings
 	found.report(problems)
-	_, planned := p.Plan(Options{})
-	found.report(planned)
-	for _, part := range p.variants() {
-		_, planned := p.Plan(Options{Part: part})
-		found.report(planned)
+	steps := 0
+	for _, part := range append([]string{""}, p.variants()...) {
+		w := p.plan(Options{Part: part})
+		found.report(w.list)
+		if steps += w.unrolled; steps > stepsOfAllMax {
+			found.add(p.root.KeySpan("variants"), "too-many-steps", "", "the variants make more than %d steps between them", stepsOfAllMax)
+			break
+		}
 	}
 	found.list.Sort()
 	return p, file, found.list

@@ -23,6 +23,7 @@ type planner struct {
 	seen      map[string]bool              // recordings, by key
 	figures   map[string]limits.FigureType // worked out so far
 	names     []string                     // of all figures
+	unrolled  int                          // unrolled
 	unrolling bool                         // steps are being unrolled: a loop comes by a mistake more than once
 	refused   bool                         // there are mistakes in the steps
 	partial   bool                         // some steps are not in the plan, for mistakes that are reported
@@ -31,6 +32,14 @@ type planner struct {
 // Plan works a procedure out for a part and its parameters: loops unrolled, figures and limits resolved. It finds every
 // mistake that can be found without a bench.
 func (p *Procedure) Plan(o Options) (*Plan, source.List) {
+	w := p.plan(o)
+	if len(w.list) > 0 {
+		return nil, w.list
+	}
+	return w.plan, nil
+}
+
+func (p *Procedure) plan(o Options) *planner {
 	w := &planner{procedure: p, seen: map[string]bool{}, places: map[finding]bool{}, figures: map[string]limits.FigureType{}}
 	root := p.root
 	w.plan = &Plan{Name: p.Name, Title: root.Text("title"), Revision: root.Text("revision"), Specification: root.Text("specification"),
@@ -50,10 +59,7 @@ func (p *Procedure) Plan(o Options) (*Plan, source.List) {
 		}
 	}
 	w.list.Sort()
-	if len(w.list) > 0 {
-		return nil, w.list
-	}
-	return w.plan, nil
+	return w
 }
 
 // add reports a mistake; while loops are unrolled, one of a kind for each place.

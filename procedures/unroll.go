@@ -36,7 +36,7 @@ func (p *planner) unroll() {
 	if st.full() {
 		p.add(p.procedure.root.KeySpan("steps"), "too-many-steps", "", "the loops make more than %d steps", stepsMax)
 	}
-	p.unrolling = false
+	p.unrolling, p.unrolled = false, st.number
 	p.refused = len(p.list) > before
 	p.partial = st.partial || st.full() || !p.procedure.root.Has("steps")
 }

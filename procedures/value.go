@@ -100,7 +100,8 @@ func duration(v quantity.Value) time.Duration {
 
 // Bounds of a plan.
 const (
-	stepsMax        = 20_000
+	stepsMax        = 10_000
+	stepsOfAllMax   = 100_000 // over all variants, which Load plans
 	repeatsMax      = 10_000
 	benchSecondsMax = 90 * 86400
 )
