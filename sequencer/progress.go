@@ -35,19 +35,19 @@ func watched(ctx context.Context, e *engine.Engine, out io.Writer, wall instrume
 	for {
 		select {
 		case end := <-ended:
-			show(e.Status(), true)
+			show(e.Status())
 			return end.outcome, end.err
 		case <-ticks.C:
-			show(e.Status(), false)
+			show(e.Status())
 		}
 	}
 }
 
-// lineByStep writes a line when a top-level step begins, for logs and pipes.
-func lineByStep(out io.Writer) func(*engine.Status, bool) {
+// lineByStep writes a line when the top-level step is another than before, for logs and pipes.
+func lineByStep(out io.Writer) func(*engine.Status) {
 	shown := 0
-	return func(s *engine.Status, last bool) {
-		if s.Number == shown || last || s.Steps == 0 {
+	return func(s *engine.Status) {
+		if s.Number == shown || s.Steps == 0 {
 			return
 		}
 		shown = s.Number
@@ -56,9 +56,9 @@ func lineByStep(out io.Writer) func(*engine.Status, bool) {
 }
 
 // redrawn keeps a block of lines up to date on a terminal.
-func redrawn(out *os.File) func(*engine.Status, bool) {
+func redrawn(out *os.File) func(*engine.Status) {
 	drawn := 0
-	return func(s *engine.Status, last bool) {
+	return func(s *engine.Status) {
 		if s.Steps == 0 {
 			return
 		}

@@ -32,11 +32,11 @@ func bound(f *source.File, problems *source.List) bool {
 	case len(bytes.TrimSpace(text)) == 0:
 		return refuse(0, "empty", "the document is empty", "")
 	}
-	if n := marks(text); n > marksMax {
-		return refuse(0, "too-large", fmt.Sprintf("the document has about %d keys, list items and lines, at most %d are read", n, marksMax), "split it")
-	}
 	if at, deep := tooDeep(text); deep {
 		return refuse(at, "too-deep", fmt.Sprintf("nested more than %d deep", depthMax), "")
+	}
+	if n := marks(text); n > marksMax {
+		return refuse(0, "too-large", fmt.Sprintf("the document has about %d keys, list items and lines, at most %d are read", n, marksMax), "split it")
 	}
 	return true
 }

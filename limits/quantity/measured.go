@@ -292,6 +292,9 @@ func (m Measured) String() string {
 	if m.Unit.def() != one {
 		unit = " " + m.Unit.String()
 	}
+	if m.U == 0 {
+		return Format(m.Value, 0) + unit
+	}
 	return fmt.Sprintf("%s%s, u %s%s", Format(m.Value, m.U), unit, Format(m.U, m.U), unit)
 }
 

@@ -67,6 +67,7 @@ func init() {
 		}
 		atoms[r.symbol] = &definition{r.symbol, r.dimension, new(big.Rat).Mul(f, f), r.pi}
 	}
+	interned.Store(one.symbol, one) // so that "1" is the zero Unit
 }
 
 var interned sync.Map // symbol -> *definition

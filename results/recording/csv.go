@@ -25,7 +25,7 @@ type CSVOptions struct {
 
 // ReadCSV reads a recording that was made elsewhere: one sample a line, in a column of decimal numbers.
 //
-// Lines that are empty or start with # are passed over; a first line that holds no number is a heading. Columns are
+// Lines that start with # are passed over, as are empty ones before and after the samples; a first line that holds no number is a heading. Columns are
 // parted by comma, semicolon or tab. The column is the one named in the options, else the only one, else the one
 // headed "rate".
 //
@@ -39,7 +39,11 @@ func ReadCSV(name string, from io.Reader, o CSVOptions) (*Recording, error) {
 	c := csvColumn{name: name, want: o.Column, at: -1}
 	for n := 1; lines.Scan(); n++ {
 		line := bytes.TrimSpace(bytes.TrimPrefix(lines.Bytes(), []byte("\xef\xbb\xbf")))
-		if len(line) == 0 || line[0] == '#' {
+		if len(line) == 0 {
+			c.empty(n)
+			continue
+		}
+		if line[0] == '#' {
 			continue
 		}
 		if bytes.IndexByte(line, 0) >= 0 {
@@ -75,6 +79,14 @@ type csvColumn struct {
 	width      int // columns; 0: no line yet
 	at         int // which is read
 	numbers    []decimal
+	gap        int // line of the first empty line since the last sample; 0: none
+}
+
+// empty notes an empty line: between samples it is a gap.
+func (c *csvColumn) empty(n int) {
+	if len(c.numbers) > 0 && c.gap == 0 {
+		c.gap = n
+	}
 }
 
 func (c *csvColumn) line(n int, text string) error {
@@ -138,6 +150,9 @@ func (c *csvColumn) choose(n int, headings []string) error {
 }
 
 func (c *csvColumn) number(n int, cell string) error {
+	if c.gap > 0 {
+		n, cell = c.gap, ""
+	}
 	switch strings.ToLower(cell) {
 	case "":
 		return fmt.Errorf("%s:%d: a value is missing: a gap; figures over a gap would be wrong, cut the file there", c.name, n)

@@ -115,10 +115,32 @@ func (p *page) trial(t results.TrialReport) {
 	for _, line := range strings.Split(strings.TrimRight(b.String(), "\n"), "\n") {
 		p.linef("%s", line)
 	}
-	for _, j := range t.Judgements {
-		if j.Verdict != "accept" {
-			p.linef("  %s by clause %s%s: %s; required is %s%s", strings.ToUpper(j.Verdict), j.Clause, where(j.Place), found(j), j.Require, odds(j))
+	for _, limit := range byLimit(t.Judgements) {
+		p.why(limit)
+	}
+}
+
+// why says of a limit that is missed or cannot be told what was found where it came out worst, and in how many elements.
+func (p *page) why(limit []results.JudgementReport) {
+	for _, verdict := range []string{"reject", "undecided"} {
+		var worst *results.JudgementReport
+		n := 0
+		for i, j := range limit {
+			if j.Verdict != verdict {
+				continue
+			}
+			if n++; worst == nil || less(j, *worst) {
+				worst = &limit[i]
+			}
 		}
+		if worst == nil {
+			continue
+		}
+		many := ""
+		if len(limit) > 1 {
+			many = fmt.Sprintf(" in %d of %d, worst", n, len(limit))
+		}
+		p.linef("  %s by clause %s%s%s: %s; required is %s%s", strings.ToUpper(verdict), worst.Clause, many, where(worst.Place), found(*worst), worst.Require, odds(*worst))
 	}
 }
 

@@ -122,14 +122,18 @@ func (s *settle) tick(ctx context.Context) (bool, error) {
 	var said []string
 	judged := 0
 	for _, at := range s.watched() {
-		if s.slots[at.id] == nil {
-			s.slots[at.id] = &steady{criterion: s.criterion()}
+		key, name := at.id, "slot "+string(at.id)
+		if benchReading(s.ask.Reading) { // followed through whichever slots are live
+			key, name = "", s.ask.Reading
+		}
+		if s.slots[key] == nil {
+			s.slots[key] = &steady{criterion: s.criterion()}
 		}
 		judged++
 		value := s.e.watch.of(at, s.ask.Reading)
-		if !s.slots[at.id].add(now, value) {
+		if !s.slots[key].add(now, value) {
 			waiting = append(waiting, at)
-			said = append(said, fmt.Sprintf("slot %s %.2f", at.id, value))
+			said = append(said, fmt.Sprintf("%s %.2f", name, value))
 		}
 	}
 	switch {
@@ -143,10 +147,10 @@ func (s *settle) tick(ctx context.Context) (bool, error) {
 	case benchReading(s.ask.Reading) || len(waiting) == judged:
 		return false, &instruments.Error{Op: "settle", Kind: instruments.Timeout,
 			Err: fmt.Errorf("%s did not come to stay within %s of %s in %s (%s); look at chamber, door and lag, or allow more with at-most",
-				s.ask.Reading, s.ask.Band, s.ask.Target, s.ask.AtMost, strings.Join(said, ", "))}
+				s.ask.Reading, s.ask.Band, s.ask.Target, spoken(s.ask.AtMost), strings.Join(said, ", "))}
 	}
 	for _, late := range waiting {
-		s.e.endTrial(ctx, late, fmt.Sprintf("%s did not settle at %s in %s", s.ask.Reading, s.ask.Target, s.ask.AtMost))
+		s.e.endTrial(ctx, late, fmt.Sprintf("%s did not settle at %s in %s", s.ask.Reading, s.ask.Target, spoken(s.ask.AtMost)))
 	}
 	return true, nil
 }
@@ -217,7 +221,7 @@ func (p *park) tick(context.Context) (bool, error) {
 	}
 	if p.e.clock.Now().After(p.limit) {
 		return false, &instruments.Error{Op: "park", Kind: instruments.Timeout,
-			Err: fmt.Errorf("expected the chamber within %s of %s in %s, it reads %.2f degC; do not open it", parkBand, p.target, parkLimit, got)}
+			Err: fmt.Errorf("expected the chamber within %s of %s in %s, it reads %.2f degC; do not open it", parkBand, p.target, spoken(parkLimit), got)}
 	}
 	return false, nil
 }

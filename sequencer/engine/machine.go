@@ -140,3 +140,14 @@ func (w *wait) start(context.Context) error {
 
 func (w *wait) tick(context.Context) (bool, error) { return !w.e.clock.Now().Before(w.end), nil }
 func (w *wait) due() time.Time                     { return w.end }
+
+// spoken says a length of time as people do.
+func spoken(d time.Duration) string {
+	switch {
+	case d >= time.Hour && d%time.Hour == 0:
+		return fmt.Sprintf("%d h", d/time.Hour)
+	case d >= time.Minute && d%time.Minute == 0:
+		return fmt.Sprintf("%d min", d/time.Minute)
+	}
+	return fmt.Sprintf("%.4g s", d.Seconds())
+}

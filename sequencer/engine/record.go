@@ -217,7 +217,7 @@ func (r *record) listen(ctx context.Context, t *tap) {
 		heard = t.slot.last
 	}
 	if r.e.clock.Now().Sub(heard) > silence {
-		r.e.endTrial(ctx, t.slot, fmt.Sprintf("the gyro has sent no valid sample for %s during the recording %q", silence, r.ask.Name))
+		r.e.endTrial(ctx, t.slot, fmt.Sprintf("the gyro has sent no valid sample for %s during the recording %q", spoken(silence), r.ask.Name))
 	}
 }
 

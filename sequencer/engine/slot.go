@@ -171,7 +171,7 @@ func (e *Engine) confirmVoltage(ctx context.Context, s *slot, op string, good fu
 		}
 		if !e.clock.Now().Before(until) {
 			return &instruments.Error{Op: op, Where: instruments.Where{Slot: s.id}, Kind: instruments.Refused,
-				Err: fmt.Errorf("the supply reads %s after %s, expected %s; look at its wiring and current limit", reading.Value, confirmWithin, want)}
+				Err: fmt.Errorf("the supply reads %s after %s, expected %s; look at its wiring and current limit", reading.Value, spoken(confirmWithin), want)}
 		}
 		if err := e.clock.Sleep(ctx, confirmEvery); err != nil {
 			return err
