@@ -1,9 +1,7 @@
 package profile
 
 import (
-	"bytes"
 	"encoding/hex"
-	"fmt"
 	"slices"
 	"strconv"
 	"strings"
@@ -14,258 +12,203 @@ import (
 	"proofrate/limits/source"
 )
 
-// frame says how a stream's frames are laid out.
+const (
+	frameLeast = 3 // sync, a number, a checksum
+	frameMost  = 1024
+)
+
+// frame is what a profile of the family frames says.
 type frame struct {
 	length   int
 	sync     []byte
-	big      bool
 	check    checksum
 	from, to int // of the bytes that the checksum covers, to exclusive
 	checkAt  int
-	counter  *field
-	valid    *field
+	checkBig bool
+	counter  *field // nil: none
+	valid    *field // nil: every frame is a sample
 	channels []field
 	readings []frameReading
 }
 
 // field is a number in a frame.
 type field struct {
-	at     int
-	as     numberKind
-	hasBit bool
-	bit    int
+	at    int
+	as    numberKind
+	big   bool
+	shift uint
+	width uint // bits, from shift
 }
 
 type frameReading struct {
 	name string
 	field
-	scale float64
-	unit  quantity.Unit
-}
-
-// getNumber takes a number out of bytes.
-func getNumber(p []byte, signed, big bool) int64 {
-	var x uint64
-	if big {
-		for _, b := range p {
-			x = x<<8 | uint64(b)
-		}
-	} else {
-		for i := len(p) - 1; i >= 0; i-- {
-			x = x<<8 | uint64(p[i])
-		}
-	}
-	if shift := 64 - 8*len(p); signed {
-		return int64(x<<shift) >> shift
-	}
-	return int64(x)
+	scaling
+	unit quantity.Unit
 }
 
 // of takes the field out of a frame.
-func (f *field) of(p []byte, big bool) int64 {
-	x := getNumber(p[f.at:f.at+f.as.bytes], f.as.signed, big)
-	if f.hasBit {
-		return x >> f.bit & 1
+func (f *field) of(p []byte) int64 {
+	x := integer(p[f.at:f.at+f.as.bytes], f.as.signed, f.big)
+	if f.width == uint(8*f.as.bytes) {
+		return x
 	}
-	return x
+	left := 64 - f.shift - f.width
+	if f.as.signed {
+		return x << left >> (left + f.shift)
+	}
+	return int64(uint64(x) << left >> (left + f.shift))
 }
 
-// sound says whether p begins with a whole frame.
+// sound says whether p, a frame's length of bytes, is a frame.
 func (f *frame) sound(p []byte) bool {
-	if !bytes.HasPrefix(p, f.sync) {
-		return false
+	for i, b := range f.sync {
+		if p[i] != b {
+			return false
+		}
 	}
-	want := uint32(getNumber(p[f.checkAt:f.checkAt+f.check.width], false, f.big))
-	return f.check.of(p[f.from:f.to]) == want
+	return f.check.of(p[f.from:f.to]) == uint32(integer(p[f.checkAt:f.checkAt+f.check.width], false, f.checkBig))
 }
 
-// frames reads the family's part of a profile.
+// frames reads what a profile of the family frames says.
 func (r *reader) frames() {
-	m := r.map_.Map("frame")
-	if !m.Has("length") || !m.Has("sync") || !m.Has("channels") {
+	m := r.m.Map("frame")
+	if !m.Has("length") {
 		return
 	}
-	f := &frame{length: m.Int("length"), big: m.Text("byte-order") == "big"}
-	if f.length < 3 || f.length > 1024 {
-		r.add(m.ValueSpan("length"), "wrong-value", "", "length: 3 to 1024 bytes were expected")
-		return
+	f := &frame{length: r.between(m, "length", frameLeast, frameMost)}
+	if m.Has("sync") {
+		sync, err := hex.DecodeString(strings.Join(m.Words("sync"), ""))
+		if err != nil || len(sync) == 0 || len(sync) >= f.length {
+			r.add(m.ValueSpan("sync"), "wrong-value", "", "sync: bytes in hexadecimal were expected, fewer than the frame has, as in A5 5A")
+		}
+		f.sync = sync
 	}
-	sync, err := hex.DecodeString(strings.Join(m.Words("sync"), ""))
-	if err != nil || len(sync) == 0 || len(sync) >= f.length {
-		r.add(m.ValueSpan("sync"), "wrong-value", "", "sync: bytes in hexadecimal were expected, as in A5 5A")
-		return
+	if m.Has("checksum") {
+		r.checksum(f, m.Map("checksum"))
 	}
-	f.sync = sync
-	r.checksum(f, m.Map("checksum"))
 	if m.Has("counter") {
-		f.counter = r.field(f, m.Map("counter"))
+		f.counter = r.field(f, m.KeySpan("counter"), m.Map("counter"), nil)
 		r.p.FrameCounter = true
+		if f.counter.as.signed {
+			r.add(m.Map("counter").ValueSpan("as"), "wrong-value", "", "a counter has no sign")
+		}
 	}
 	if m.Has("valid") {
-		f.valid = r.field(f, m.Map("valid"))
-		if !m.Map("valid").Has("bit") {
-			r.add(m.KeySpan("valid"), "missing-key", "", "valid is one bit; give the key \"bit\"")
+		f.valid = r.field(f, m.KeySpan("valid"), m.Map("valid"), nil)
+		if f.valid.width != 1 {
+			r.add(m.KeySpan("valid"), "wrong-value", "give the key \"bits\", as in bits: 0", "valid is one bit")
 		}
 	}
 	r.p.SampleRate = m.Quantity("rate")
-	r.frameChannels(f, m.Node("channels"))
-	r.frameReadings(f, m.Node("readings"))
-	r.p.decoding = f
+	if m.Has("rate") && !(r.p.SampleRate.Number > 0) {
+		r.add(m.ValueSpan("rate"), "wrong-value", "", "rate: frames a second were expected, more than none")
+	}
+	r.frameChannels(f, m)
+	r.frameReadings(f, m)
+	r.p.frame = f
+}
+
+func (r *reader) big(m document.Map) bool {
+	if m.Has("byte-order") {
+		return m.Text("byte-order") == "big"
+	}
+	return r.m.Map("frame").Text("byte-order") == "big"
 }
 
 func (r *reader) checksum(f *frame, m document.Map) {
-	f.check, f.checkAt = checksums[m.Text("is")], m.Int("at")
-	from, to, ok := strings.Cut(m.Text("over"), " ")
-	a, errA := strconv.Atoi(from)
-	b, errB := strconv.Atoi(to)
-	switch {
-	case !m.Has("is") || !m.Has("over") || !m.Has("at"):
-	case !ok || errA != nil || errB != nil || a < 0 || b < a || b >= f.length:
-		r.add(m.ValueSpan("over"), "wrong-value", "", "over: the first and the last byte were expected, from 0 to %d", f.length-1)
-	case f.checkAt < 0 || f.checkAt+f.check.width > f.length:
-		r.add(m.ValueSpan("at"), "wrong-value", "", "at: the checksum does not lie in the frame")
-	default:
-		f.from, f.to = a, b+1
+	f.check, f.checkAt, f.checkBig = checksums[m.Text("is")], m.Int("at"), r.big(m)
+	if m.Has("at") && (f.checkAt < 0 || f.checkAt+f.check.width > f.length) {
+		r.add(m.ValueSpan("at"), "wrong-value", "", "at: the checksum of %d bytes does not lie in the frame of %d", f.check.width, f.length)
 	}
+	if !m.Has("over") {
+		return
+	}
+	first, last, ok := twoNumbers(m.Words("over"))
+	switch {
+	case !ok || first < 0 || last < first || last >= f.length:
+		r.add(m.ValueSpan("over"), "wrong-value", "", "over: the first and the last byte were expected, from 0 to %d", f.length-1)
+	case last >= f.checkAt && first < f.checkAt+f.check.width:
+		r.add(m.ValueSpan("over"), "wrong-value", "", "over: a checksum does not cover itself")
+	}
+	f.from, f.to = first, last+1
 }
 
-func (r *reader) field(f *frame, m document.Map) *field {
-	got := &field{at: m.Int("at"), as: numberKinds[m.Text("as")], hasBit: m.Has("bit"), bit: m.Int("bit")}
-	switch {
-	case !m.Has("at") || !m.Has("as"):
-	case got.at < 0 || got.at+got.as.bytes > f.length:
-		r.add(m.ValueSpan("at"), "wrong-value", "", "at: the field does not lie in the frame of %d bytes", f.length)
-	case got.hasBit && (got.bit < 0 || got.bit >= 8*got.as.bytes):
-		r.add(m.ValueSpan("bit"), "wrong-value", "", "bit: 0 to %d were expected", 8*got.as.bytes-1)
+func twoNumbers(words []string) (a, b int, ok bool) {
+	if len(words) != 2 {
+		return 0, 0, false
 	}
+	a, errA := strconv.Atoi(words[0])
+	b, errB := strconv.Atoi(words[1])
+	return a, b, errA == nil && errB == nil
+}
+
+// field reads where a number stands. Keys that only serve other fields are told.
+func (r *reader) field(f *frame, at source.Span, m document.Map, serve []string) *field {
+	got := &field{at: m.Int("at"), as: numberKinds[m.Text("as")], big: r.big(m)}
+	got.width = uint(8 * got.as.bytes)
+	for _, key := range []string{"count", "scale", "offset", "unit"} {
+		if m.Stands(key) && !slices.Contains(serve, key) {
+			r.add(m.KeySpan(key), "unused-key", "leave it out", "nothing uses %s here", key)
+		}
+	}
+	if m.Has("at") && m.Has("as") && (got.at < 0 || got.at+got.as.bytes > f.length) {
+		r.add(m.ValueSpan("at"), "wrong-value", "", "at: the field of %d bytes does not lie in the frame of %d", got.as.bytes, f.length)
+	}
+	if !m.Has("bits") || !m.Has("as") {
+		return got
+	}
+	words := m.Words("bits")
+	if len(words) == 1 {
+		words = append(words, words[0])
+	}
+	low, high, ok := twoNumbers(words)
+	if !ok || low < 0 || high < low || high >= 8*got.as.bytes {
+		r.add(m.ValueSpan("bits"), "wrong-value", "", "bits: the lowest and the highest were expected, from 0 to %d", 8*got.as.bytes-1)
+		return got
+	}
+	got.shift, got.width = uint(low), uint(high-low+1)
 	return got
 }
 
-func (r *reader) frameChannels(f *frame, n *document.Node) {
-	if n.Form != document.Mapping || len(n.Entries()) == 0 {
-		r.add(n.Span, "wrong-form", "", "channels: a map with rate or angle was expected, this is %s", n.Form)
-		return
+// channelDimensions are those of the first part of a channel's name; the second is an axis.
+var channelDimensions = map[string]quantity.Dimension{"rate": quantity.AngularRate, "angle": quantity.Angle}
+
+func (r *reader) frameChannels(f *frame, m document.Map) {
+	list := r.entries(m, "channels")
+	if n := m.Node("channels"); n != nil && n.Form == document.Mapping && len(list) == 0 {
+		r.add(n.Span, "wrong-form", "", "a gyro has one channel at least")
 	}
-	for _, e := range n.Entries() {
-		kind, axis, _ := strings.Cut(e.Key.Text(), ".")
-		want, ok := map[string]quantity.Dimension{"rate": quantity.AngularRate, "angle": quantity.Angle}[kind]
-		if !ok || strings.HasSuffix(e.Key.Text(), ".") || axis != "" && axis != "x" && axis != "y" && axis != "z" {
-			r.add(e.Key.Span, "unknown-channel", source.DidYouMean(kind, []string{"rate", "angle"}), "a gyro has no channel %q", e.Key.Text())
-			continue
+	for _, e := range list {
+		kind, axis, several := strings.Cut(e.Key.Text(), ".")
+		dimension, known := channelDimensions[kind]
+		field := document.Decode(e.Value, &fieldTable, r.problems)
+		f.channels = append(f.channels, *r.field(f, e.Key.Span, field, []string{"count"}))
+		count := field.Quantity("count")
+		r.p.Channels = append(r.p.Channels, instruments.Channel{Name: e.Key.Text(), Count: count})
+		switch {
+		case !known || several && axis != "x" && axis != "y" && axis != "z":
+			r.add(e.Key.Span, "unknown-channel", source.DidYouMean(e.Key.Text(), []string{"rate", "angle", "rate.x", "rate.y", "rate.z", "angle.x", "angle.y", "angle.z"}), "a gyro has no channel %q", e.Key.Text())
+		case !field.Stands("count"):
+			r.add(e.Key.Span, "missing-key", "units that fit: "+unitsOf(dimension), "the channel %s needs the key \"count\"", e.Key.Text())
+		case field.Has("count") && count.Dimension() != dimension:
+			r.add(field.ValueSpan("count"), "wrong-unit", "units that fit: "+unitsOf(dimension), "%s is a unit of %s, and a count of %s is of %s", count.Unit, count.Dimension(), e.Key.Text(), dimension)
+		case field.Has("count") && !(count.Number > 0):
+			r.add(field.ValueSpan("count"), "wrong-value", "the bench file states the sense", "count: more than nothing was expected")
 		}
-		m := document.Decode(e.Value, &fieldTable, r.problems)
-		if !m.Has("count") || m.Quantity("count").Dimension() != want {
-			r.add(e.Key.Span, "wrong-dimension", "state count: with a unit such as "+unitOf(want), "channel %s needs what one count is worth, in a unit of %s", e.Key.Text(), want)
-			continue
-		}
-		f.channels = append(f.channels, *r.field(f, m))
-		r.p.Channels = append(r.p.Channels, instruments.Channel{Name: e.Key.Text(), Count: m.Quantity("count")})
+	}
+	if one := len(r.p.Channels) == 1; one && channelDimensions[r.p.Channels[0].Name] != (quantity.Dimension{}) {
+		r.p.Readings["gyro"] = append(r.p.Readings["gyro"], gyroRate)
 	}
 }
 
-func (r *reader) frameReadings(f *frame, n *document.Node) {
-	if n == nil {
-		return
-	}
-	if n.Form != document.Mapping {
-		r.add(n.Span, "wrong-form", "", "readings: a map of names was expected, this is %s", n.Form)
-		return
-	}
-	for _, e := range n.Entries() {
-		m := document.Decode(e.Value, &fieldTable, r.problems)
-		unit, ok := r.readingOf(e.Key, m)
-		if !ok {
-			continue
+func (r *reader) frameReadings(f *frame, m document.Map) {
+	for _, e := range r.entries(m, "readings") {
+		field := document.Decode(e.Value, &fieldTable, r.problems)
+		unit, ok := r.readingOf(e.Key, field)
+		if ok && !field.Stands("unit") {
+			r.add(e.Key.Span, "missing-key", "", "the reading %s needs the key \"unit\"", e.Key.Text())
 		}
-		reading := frameReading{name: e.Key.Text(), field: *r.field(f, m), scale: 1, unit: unit}
-		if m.Has("scale") {
-			reading.scale = m.Number("scale")
-		}
-		f.readings = append(f.readings, reading)
-	}
-	slices.SortFunc(f.readings, func(a, b frameReading) int { return strings.Compare(a.name, b.name) })
-}
-
-// decoder takes frames off a stream.
-type decoder struct {
-	*frame
-	span    uint64 // of the counter; 0: there is none
-	next    uint64 // counter of the next frame, wraps removed
-	started bool
-	newest  []byte // the newest frame
-	skipped uint64 // bytes thrown away since the last sound frame
-}
-
-func newDecoder(f *frame) *decoder {
-	d := &decoder{frame: f, newest: make([]byte, 0, f.length)}
-	if f.counter != nil {
-		d.span = 1 << (8 * f.counter.as.bytes)
-	}
-	return d
-}
-
-// take decodes all whole frames of p into the batch and gives how many bytes it has used up.
-//
-// Damage costs the damaged frame and no other: after a frame that is not sound the search goes on at the very next
-// byte, so that a sync pattern inside the damage cannot hide the frame behind it.
-func (d *decoder) take(p []byte, batch *instruments.Batch) (used int) {
-	n := d.length
-	for len(p)-used >= n {
-		at := p[used:]
-		if d.sound(at[:n]) {
-			d.frameIn(at[:n], batch)
-			used += n
-			continue
-		}
-		if bytes.HasPrefix(at, d.sync) {
-			batch.Damaged++
-		}
-		// The next place where a frame can begin.
-		skip := bytes.IndexByte(at[1:], d.sync[0])
-		if skip < 0 {
-			skip = len(at) - 1
-		}
-		used += 1 + skip
-	}
-	return used
-}
-
-// frameIn adds a sound frame.
-func (d *decoder) frameIn(p []byte, batch *instruments.Batch) {
-	d.newest = append(d.newest[:0], p...)
-	counter := d.next
-	if d.counter != nil {
-		got := uint64(d.counter.of(p, d.big)) & (d.span - 1)
-		if !d.started {
-			counter = got
-		} else {
-			counter = d.next + (got-d.next)&(d.span-1)
-		}
-	}
-	lost := counter - d.next
-	if !d.started {
-		lost = 0
-	}
-	d.started = true
-	d.next = counter + 1
-	if d.valid != nil && d.valid.of(p, d.big) == 0 {
-		return
-	}
-	if batch.Len() == 0 {
-		batch.First = counter
-		if len(batch.Counts) != len(d.channels) {
-			batch.Counts = make([][]int64, len(d.channels))
-		}
-	}
-	if lost > 0 {
-		batch.Gaps = append(batch.Gaps, instruments.Gap{Before: batch.Len(), Lost: lost})
-	}
-	for i := range d.channels {
-		batch.Counts[i] = append(batch.Counts[i], d.channels[i].of(p, d.big))
+		f.readings = append(f.readings, frameReading{e.Key.Text(), *r.field(f, e.Key.Span, field, []string{"scale", "offset", "unit"}), r.scaling(field), unit})
 	}
 }
-
-// restart forgets the counter.
-func (d *decoder) restart() { d.started, d.next, d.newest = false, 0, d.newest[:0] }
-
-func (f *frame) String() string { return fmt.Sprintf("frames of %d bytes", f.length) }

@@ -4,137 +4,149 @@ import (
 	"encoding/binary"
 	"errors"
 	"fmt"
-
-	"proofrate/instruments"
 )
 
-// Function codes and exceptions of the Modbus application protocol, V1.1b3.
+// Function codes of the Modbus application protocol, V1.1b3, section 6.
 const (
+	readCoils     = 0x01
+	readDiscretes = 0x02
 	readHolding   = 0x03
 	readInput     = 0x04
+	writeCoil     = 0x05
 	writeSingle   = 0x06
 	writeMultiple = 0x10
 	exceptionFlag = 0x80
 )
 
+// exceptions are those of section 7.
 var exceptions = map[byte]string{
-	1: "illegal function", 2: "illegal data address", 3: "illegal data value", 4: "server device failure", 5: "acknowledge, still at it",
-	6: "server device busy", 8: "memory parity error", 10: "gateway path unavailable", 11: "gateway target does not respond",
+	1: "it does not know the function", 2: "it has no such address", 3: "it does not take the value", 4: "it has failed",
+	5: "it is still at work on the request", 6: "it is busy", 8: "its memory has failed", 10: "the gateway has no path to it", 11: "it does not answer the gateway",
 }
+
+const (
+	rtuHead, rtuTail = 1, 2 // device; CRC
+	tcpHead          = 7    // transaction, protocol, length, device
+	tcpLengthMost    = 254  // of device and PDU
+	coilOn           = 0xff00
+)
 
 var modbusCRC = checksums["CRC-16/MODBUS"].of
 
-// modbusPDU makes a request: of so many registers, or with their contents.
+// readPDU makes a request for so many registers or bits.
 func readPDU(function byte, address uint16, count int) []byte {
-	p := []byte{function}
-	p = binary.BigEndian.AppendUint16(p, address)
+	p := binary.BigEndian.AppendUint16([]byte{function}, address)
 	return binary.BigEndian.AppendUint16(p, uint16(count))
 }
 
-func writePDU(address uint16, words []uint16) []byte {
-	if len(words) == 1 {
-		p := binary.BigEndian.AppendUint16([]byte{writeSingle}, address)
-		return binary.BigEndian.AppendUint16(p, words[0])
+// writePDU makes a request that writes one register or coil, or several registers.
+func writePDU(function byte, address uint16, words []uint16) []byte {
+	p := binary.BigEndian.AppendUint16([]byte{function}, address)
+	if function == writeMultiple {
+		p = binary.BigEndian.AppendUint16(p, uint16(len(words)))
+		p = append(p, byte(2*len(words)))
 	}
-	p := binary.BigEndian.AppendUint16([]byte{writeMultiple}, address)
-	p = binary.BigEndian.AppendUint16(p, uint16(len(words)))
-	p = append(p, byte(2*len(words)))
 	for _, w := range words {
 		p = binary.BigEndian.AppendUint16(p, w)
 	}
 	return p
 }
 
-// rtuFrame wraps a PDU for a serial line: address, PDU, CRC with its low byte first.
+// rtuFrame wraps a PDU for a serial line: device, PDU, CRC with its low byte first.
 func rtuFrame(device byte, pdu []byte) []byte {
-	f := append([]byte{device}, pdu...)
+	f := append(make([]byte, 0, rtuHead+len(pdu)+rtuTail), device)
+	f = append(f, pdu...)
 	return binary.LittleEndian.AppendUint16(f, uint16(modbusCRC(f)))
 }
 
-// tcpFrame wraps a PDU for TCP: transaction, protocol 0, length, device.
+// tcpFrame wraps a PDU for TCP: transaction, protocol 0, length, device, PDU.
 func tcpFrame(transaction uint16, device byte, pdu []byte) []byte {
-	f := binary.BigEndian.AppendUint16(nil, transaction)
+	f := binary.BigEndian.AppendUint16(make([]byte, 0, tcpHead+len(pdu)), transaction)
 	f = binary.BigEndian.AppendUint16(f, 0)
-	f = binary.BigEndian.AppendUint16(f, uint16(len(pdu)+1))
+	f = binary.BigEndian.AppendUint16(f, uint16(1+len(pdu)))
 	return append(append(f, device), pdu...)
 }
 
-// answerLength is how long the PDU of a sound answer to a request is.
+// answerLength is how long the PDU of the answer to a request is.
 func answerLength(request []byte) int {
-	switch request[0] {
+	switch count := int(binary.BigEndian.Uint16(request[3:])); request[0] {
+	case readCoils, readDiscretes:
+		return 2 + (count+7)/8
 	case readHolding, readInput:
-		return 2 + 2*int(binary.BigEndian.Uint16(request[3:]))
+		return 2 + 2*count
 	}
-	return 5 // an echo of function, address and value or count
+	return 5 // function and address, and the value or the count
 }
 
-// checkAnswer holds an answer's PDU against its request.
-func checkAnswer(request, answer []byte) (instruments.Kind, error) {
-	switch {
-	case answer[0] == request[0]|exceptionFlag && len(answer) >= 2:
-		what := exceptions[answer[1]]
-		if what == "" {
-			what = "unknown"
-		}
-		return instruments.Refused, fmt.Errorf("the device answers with exception %d: %s", answer[1], what)
-	case answer[0] != request[0]:
-		return instruments.Garbled, fmt.Errorf("an answer to function %d, function %d was asked for", answer[0], request[0])
-	case len(answer) != answerLength(request):
-		return instruments.Garbled, fmt.Errorf("an answer of %d bytes, %d were expected", len(answer), answerLength(request))
-	case request[0] == readHolding || request[0] == readInput:
-		if int(answer[1]) != len(answer)-2 {
-			return instruments.Garbled, fmt.Errorf("the answer counts %d bytes and has %d", answer[1], len(answer)-2)
-		}
-	case string(answer[:5]) != string(request[:5]):
-		return instruments.Garbled, errors.New("the answer does not repeat what was written")
+// answers says whether a PDU can be the answer to a request: an exception of its function, the number of bytes that was
+// asked for, or what was written.
+func answers(request, pdu []byte) bool {
+	if len(pdu) == 2 && pdu[0] == request[0]|exceptionFlag {
+		return true
 	}
-	return 0, nil
+	if len(pdu) != answerLength(request) || pdu[0] != request[0] {
+		return false
+	}
+	if request[0] <= readInput {
+		return int(pdu[1]) == len(pdu)-2
+	}
+	return string(pdu) == string(request[:5])
 }
 
-// parseRTU takes an answer off a serial line's bytes.
-func parseRTU(device byte, request, received []byte) (used int, done bool, pdu []byte, kind instruments.Kind, err error) {
-	if len(received) < 5 {
-		return 0, false, nil, 0, nil
-	}
-	length := 1 + answerLength(request) + 2
-	if received[1] == request[0]|exceptionFlag {
-		length = 5
-	}
-	if len(received) < length {
-		return 0, false, nil, 0, nil
-	}
-	frame := received[:length]
-	if uint16(modbusCRC(frame[:length-2])) != binary.LittleEndian.Uint16(frame[length-2:]) {
-		return len(received), true, nil, instruments.Garbled, errors.New("the answer's checksum is wrong")
-	}
-	if frame[0] != device {
-		return len(received), true, nil, instruments.Garbled, fmt.Errorf("an answer of device %d, device %d was asked", frame[0], device)
-	}
-	pdu = frame[1 : length-2]
-	kind, err = checkAnswer(request, pdu)
-	return length, true, pdu, kind, err
-}
-
-// parseTCP takes an answer off a TCP link's bytes; answers to other transactions are passed over.
-func parseTCP(transaction uint16, device byte, request, received []byte) (used int, done bool, pdu []byte, kind instruments.Kind, err error) {
-	for {
-		if len(received)-used < 8 {
-			return 0, false, nil, 0, nil
-		}
-		head := received[used:]
-		length := int(binary.BigEndian.Uint16(head[4:]))
-		if binary.BigEndian.Uint16(head[2:]) != 0 || length < 3 || length > 254 {
-			return len(received), true, nil, instruments.Garbled, errors.New("what came is no Modbus frame")
-		}
-		if len(head) < 6+length {
-			return 0, false, nil, 0, nil
-		}
-		used += 6 + length
-		if binary.BigEndian.Uint16(head) != transaction || head[6] != device {
+// rtuAnswer finds the answer to a request in what has arrived; used is 0 if it is not there yet. Noise before it costs
+// nothing: with device, function, length and CRC an answer is told from anything else.
+func rtuAnswer(device byte, request, received []byte) (pdu []byte, used int) {
+	for at := range received {
+		rest := received[at:]
+		if rest[0] != device {
 			continue
 		}
-		pdu = head[7 : 6+length]
-		kind, err = checkAnswer(request, pdu)
-		return used, true, pdu, kind, err
+		for _, length := range [...]int{answerLength(request), 2} {
+			end := rtuHead + length
+			if len(rest) < end+rtuTail || uint16(modbusCRC(rest[:end])) != binary.LittleEndian.Uint16(rest[end:]) {
+				continue
+			}
+			if pdu := rest[rtuHead:end]; answers(request, pdu) {
+				return pdu, at + end + rtuTail
+			}
+		}
 	}
+	return nil, 0
+}
+
+var errNoModbus = errors.New("what came is no Modbus frame; is the port another service's?")
+
+// tcpAnswer takes one frame off what has arrived; used is 0 if it is not whole yet. A frame of another transaction is
+// used up and gives no PDU.
+func tcpAnswer(transaction uint16, device byte, request, received []byte) (pdu []byte, used int, err error) {
+	if len(received) < tcpHead {
+		return nil, 0, nil
+	}
+	length := int(binary.BigEndian.Uint16(received[4:]))
+	if binary.BigEndian.Uint16(received[2:]) != 0 || length < 3 || length > tcpLengthMost {
+		return nil, len(received), errNoModbus
+	}
+	end := tcpHead - 1 + length
+	if len(received) < end {
+		return nil, 0, nil
+	}
+	if binary.BigEndian.Uint16(received) != transaction || received[tcpHead-1] != device {
+		return nil, end, nil
+	}
+	if pdu = received[tcpHead:end]; !answers(request, pdu) {
+		return nil, end, fmt.Errorf("% X is no answer to % X", pdu, request)
+	}
+	return pdu, end, nil
+}
+
+// exception says why a device refuses, nil if it does not.
+func exception(pdu []byte) error {
+	if pdu[0]&exceptionFlag == 0 {
+		return nil
+	}
+	what := exceptions[pdu[1]]
+	if what == "" {
+		what = "its maker's manual says why"
+	}
+	return fmt.Errorf("the device refuses with exception %d: %s", pdu[1], what)
 }

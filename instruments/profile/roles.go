@@ -12,7 +12,7 @@ import (
 	"proofrate/limits/quantity"
 )
 
-// driver speaks to one instrument over its line.
+// driver speaks to one instrument over its line, in one role.
 type driver struct {
 	profile  *Profile
 	line     *line
@@ -21,99 +21,118 @@ type driver struct {
 	readings []string
 }
 
-// driver makes one; drivers on one link share its line.
 func (p *Profile) driver(l link.Link, name, role string, channel int) (*driver, error) {
 	if !slices.Contains(p.Roles, role) || p.speech == nil {
 		return nil, fmt.Errorf("profile %s does not fill the role %s", p.Name, role)
 	}
-	if channel < 0 || channel > max(p.SupplyChannels, 0) {
-		return nil, fmt.Errorf("profile %s has no channel %d", p.Name, channel)
+	if channel < 0 || channel > p.SupplyChannels || channel == 0 && role == "supply" && p.SupplyChannels > 0 {
+		return nil, fmt.Errorf("profile %s has no channel %d; it has %d", p.Name, channel, p.SupplyChannels)
 	}
-	shared := p.shared[l]
-	if shared == nil {
-		shared = &line{link: l, name: name, timeout: p.Timeout, tries: p.Tries, Trace: p.Trace}
-		if b, ok := p.speech.(*modbus); ok && !b.tcp {
-			shared.rest = silentInterval(p.Serial.Baud)
+	return &driver{profile: p, line: p.line(l, name), role: role, channel: channel, readings: p.Readings[role]}, nil
+}
+
+// line is the one of a link: all drivers on it share its queue. Lines whose link is gone are forgotten.
+func (p *Profile) line(l link.Link, name string) *line {
+	p.mu.Lock()
+	defer p.mu.Unlock()
+	if known := p.lines[l]; known != nil {
+		return known
+	}
+	for other := range p.lines {
+		if other.Await(context.Background(), other.Clock().Now()) != nil { // it does not wait
+			delete(p.lines, other)
 		}
-		p.shared[l] = shared
 	}
-	return &driver{profile: p, line: shared, role: role, channel: channel, readings: p.Readings[role]}, nil
+	made := &line{link: l, name: name, timeout: p.Timeout, tries: p.Tries, rest: p.speech.rest(p.Serial.Baud), trace: p.Trace}
+	p.lines[l] = made
+	return made
 }
 
 // Readings are those of the role.
 func (d *driver) Readings() []string { return d.readings }
 
-// pending is a reading on its way.
-type pending struct {
-	driver *driver
-	job    *job
-	name   string
-	value  quantity.Value
+func (d *driver) refused(op string, err error) error {
+	return d.line.failure(op, instruments.Refused, err)
 }
 
-// Ask sends or queues the request.
-func (d *driver) Ask(_ context.Context, reading string) (instruments.Pending, error) {
+// pending is a reading on its way.
+type pending struct {
+	line  *line
+	job   *job
+	name  string
+	value quantity.Value
+}
+
+// Ask sends the request, or queues it behind those on their way.
+func (d *driver) Ask(ctx context.Context, reading string) (instruments.Pending, error) {
+	if ctx.Err() != nil {
+		return nil, context.Cause(ctx)
+	}
+	if !slices.Contains(d.readings, reading) {
+		return nil, d.refused("read "+reading, fmt.Errorf("this %s's profile has no such reading", d.role))
+	}
 	key := reading
 	if d.role == "meter" {
 		key = "value"
-	} else if !slices.Contains(d.readings, reading) {
-		return nil, &instruments.Error{Op: "read " + reading, Where: instruments.Where{Instrument: d.line.name}, Kind: instruments.Refused,
-			Err: fmt.Errorf("this %s has no such reading", d.role)}
 	}
-	p := &pending{driver: d, name: reading}
+	p := &pending{line: d.line, name: reading}
 	p.job = d.profile.speech.ask(d.line, key, d.channel, &p.value)
-	return p, d.line.put(p.job)
+	d.line.put(p.job)
+	return p, nil
 }
 
-// Take waits for the answer.
+// Take waits for the answer. The instrument has measured at some time between the request and the answer; the middle
+// of them is wrong by least.
 func (p *pending) Take(ctx context.Context) (instruments.Reading, error) {
-	if err := p.driver.line.take(ctx, p.job); err != nil {
+	if err := p.line.take(ctx, p.job); err != nil {
 		return instruments.Reading{}, err
 	}
-	return instruments.Reading{Name: p.name, Value: p.value, At: p.driver.line.link.Clock().Now()}, nil
+	at := p.job.begun.Add(p.job.ended.Sub(p.job.begun) / 2)
+	return instruments.Reading{Name: p.name, Value: p.value, At: at}, nil
 }
 
-// Identify asks the instrument who it is.
+// Identify asks the instrument who it is. Where its profile has no question for that, the title stands for the model.
 func (d *driver) Identify(ctx context.Context) (instruments.Identity, error) {
-	var id instruments.Identity
-	err := d.all(ctx, d.profile.speech.identify(d.line, &id))
+	id, err := d.profile.speech.identify(ctx, d.line)
+	if err == nil && id == (instruments.Identity{}) {
+		id.Model = d.profile.Title
+	}
 	return id, err
 }
 
-// all carries out jobs in order.
-func (d *driver) all(ctx context.Context, jobs []*job) error {
-	for _, j := range jobs {
-		if err := d.line.do(ctx, j); err != nil {
-			return err
-		}
-	}
-	return nil
-}
-
-// act carries out an action; a value of another dimension, or none, is refused before anything is sent.
+// act carries out an action. A value of another dimension, no value, one beyond the profile's limits and one that the
+// instrument cannot be told are refused before anything is sent.
 func (d *driver) act(ctx context.Context, name string, v values) error {
-	refused := func(err error) error {
-		return &instruments.Error{Op: name, Where: instruments.Where{Instrument: d.line.name}, Kind: instruments.Refused, Err: err}
+	if ctx.Err() != nil {
+		return context.Cause(ctx)
 	}
-	for _, a := range actionTable {
-		if a.role != d.role || a.name != name {
+	for _, a := range actionsOf([]string{d.role}) {
+		if a.name != name {
 			continue
 		}
-		for _, c := range a.values {
-			x := v[c.name]
-			if x.Dimension() != c.dimension {
-				return refused(fmt.Errorf("%s of %s: %s was expected", c.name, x, c.dimension))
-			}
-			if math.IsNaN(x.Number) || math.IsInf(x.Number, 0) {
-				return refused(fmt.Errorf("%s of %v is no value", c.name, x.Number))
+		for i := range a.values {
+			if err := d.fits(name, &a.values[i], v[a.values[i].name]); err != nil {
+				return d.refused(name, err)
 			}
 		}
 	}
-	jobs, err := d.profile.speech.act(d.line, name, v, d.channel)
-	if err != nil {
-		return refused(err)
+	return d.profile.speech.act(ctx, d.line, name, v, d.channel)
+}
+
+func (d *driver) fits(action string, c *carried, x quantity.Value) error {
+	if x.Dimension() != c.dimension {
+		return fmt.Errorf("%s of %s is of %s; expected a %s", c.name, x, x.Dimension(), c.dimension)
 	}
-	return d.all(ctx, jobs)
+	if math.IsNaN(x.Number) || math.IsInf(x.Number, 0) {
+		return fmt.Errorf("%s of %v is no value", c.name, x.Number)
+	}
+	if limit, stated := d.profile.Limits[c.name]; stated && !(x.SI() >= limit.Low.SI() && x.SI() <= limit.High.SI()) {
+		return fmt.Errorf("%s of %s is beyond what the instrument can do, %s to %s", c.name, x, limit.Low, limit.High)
+	}
+	if c.name == "ramp" && x.Number != 0 && !d.profile.speech.sends(action, c.name) {
+		return errors.New("this chamber's profile sends no ramp, so that it keeps its own; ask for none")
+	}
+	return nil
 }
 
 type table struct{ *driver }
@@ -121,30 +140,42 @@ type table struct{ *driver }
 func (t table) SetRate(ctx context.Context, rate, accel quantity.Value) error {
 	return t.act(ctx, "set-rate", values{"rate": rate, "acceleration": accel})
 }
+
 func (t table) Stop(ctx context.Context) error { return t.act(ctx, "stop", nil) }
 
-type positioner struct{ table }
+func (t table) goTo(ctx context.Context, position quantity.Value) error {
+	return t.act(ctx, "go-to", values{"position": position})
+}
+
+func (t table) oscillate(ctx context.Context, amplitude, frequency quantity.Value) error {
+	return t.act(ctx, "oscillate", values{"amplitude": amplitude, "frequency": frequency})
+}
+
+// The abilities of a table are methods of its type, so that a table has those of its profile and no other.
+type (
+	positioner struct{ table }
+	oscillator struct{ table }
+	versatile  struct{ table }
+)
 
 func (p positioner) GoTo(ctx context.Context, position quantity.Value) error {
-	return p.act(ctx, "go-to", values{"position": position})
+	return p.goTo(ctx, position)
 }
-
-type oscillator struct{ table }
 
 func (o oscillator) Oscillate(ctx context.Context, amplitude, frequency quantity.Value) error {
-	return o.act(ctx, "oscillate", values{"amplitude": amplitude, "frequency": frequency})
+	return o.oscillate(ctx, amplitude, frequency)
 }
 
-type fullTable struct {
-	positioner
-	swing oscillator
+func (v versatile) GoTo(ctx context.Context, position quantity.Value) error {
+	return v.goTo(ctx, position)
 }
 
-func (f fullTable) Oscillate(ctx context.Context, amplitude, frequency quantity.Value) error {
-	return f.swing.Oscillate(ctx, amplitude, frequency)
+func (v versatile) Oscillate(ctx context.Context, amplitude, frequency quantity.Value) error {
+	return v.oscillate(ctx, amplitude, frequency)
 }
 
-// Table makes a table's driver, with the abilities that the profile has.
+// Table makes a table's driver; it is an instruments.Positioner and an instruments.Oscillator where the profile has
+// these actions.
 func (p *Profile) Table(l link.Link, name string) (instruments.Table, error) {
 	d, err := p.driver(l, name, "table", 0)
 	if err != nil {
@@ -153,7 +184,7 @@ func (p *Profile) Table(l link.Link, name string) (instruments.Table, error) {
 	t := table{d}
 	switch {
 	case p.CanPosition && p.CanOscillate:
-		return fullTable{positioner{t}, oscillator{t}}, nil
+		return versatile{t}, nil
 	case p.CanPosition:
 		return positioner{t}, nil
 	case p.CanOscillate:
@@ -167,6 +198,7 @@ type chamber struct{ *driver }
 func (c chamber) SetTemperature(ctx context.Context, t, ramp quantity.Value) error {
 	return c.act(ctx, "set-temperature", values{"temperature": t, "ramp": ramp})
 }
+
 func (c chamber) Off(ctx context.Context) error { return c.act(ctx, "off", nil) }
 
 // Chamber makes a chamber's driver.
@@ -180,13 +212,14 @@ func (p *Profile) Chamber(l link.Link, name string) (instruments.Chamber, error)
 
 type supply struct{ *driver }
 
-func (s supply) Set(ctx context.Context, voltage, current quantity.Value) error {
-	return s.act(ctx, "set", values{"voltage": voltage, "current": current})
+func (s supply) Set(ctx context.Context, voltage, currentLimit quantity.Value) error {
+	return s.act(ctx, "set", values{"voltage": voltage, "current": currentLimit})
 }
+
 func (s supply) On(ctx context.Context) error  { return s.act(ctx, "on", nil) }
 func (s supply) Off(ctx context.Context) error { return s.act(ctx, "off", nil) }
 
-// Supply makes the driver of one channel of a supply; channel 0 is the only one of a supply without numbers.
+// Supply makes the driver of one output of a supply, numbered from 1; 0 is the only one of a supply without numbers.
 func (p *Profile) Supply(l link.Link, name string, channel int) (instruments.Supply, error) {
 	d, err := p.driver(l, name, "supply", channel)
 	if err != nil {
@@ -195,7 +228,7 @@ func (p *Profile) Supply(l link.Link, name string, channel int) (instruments.Sup
 	return supply{d}, nil
 }
 
-// Meter makes a meter's driver; its reading is "<name>.value".
+// Meter makes a meter's driver. Its reading is "<name>.value".
 func (p *Profile) Meter(l link.Link, name string) (instruments.Instrument, error) {
 	d, err := p.driver(l, name, "meter", 0)
 	if err != nil {
@@ -203,75 +236,4 @@ func (p *Profile) Meter(l link.Link, name string) (instruments.Instrument, error
 	}
 	d.readings = []string{name + ".value"}
 	return d, nil
-}
-
-// gyro drains a stream of frames.
-type gyro struct {
-	profile  *Profile
-	link     link.Link
-	name     string
-	decoder  *decoder
-	readings []string
-}
-
-// Gyro makes a gyro's driver.
-func (p *Profile) Gyro(l link.Link, name string) (instruments.Gyro, error) {
-	if p.decoding == nil {
-		return nil, fmt.Errorf("profile %s does not fill the role gyro", p.Name)
-	}
-	return &gyro{profile: p, link: l, name: name, decoder: newDecoder(p.decoding), readings: p.Readings["gyro"]}, nil
-}
-
-func (g *gyro) Channels() []instruments.Channel { return g.profile.Channels }
-func (g *gyro) Readings() []string              { return g.readings }
-
-// Drain takes what has arrived. A stream that has ended is an error once all of it has been taken.
-func (g *gyro) Drain(ctx context.Context, batch *instruments.Batch) error {
-	if len(batch.Counts) != len(g.profile.Channels) {
-		batch.Counts = make([][]int64, len(g.profile.Channels))
-	}
-	received := g.link.Peek()
-	if len(received) == 0 {
-		if err := g.link.Await(ctx, g.link.Clock().Now()); err != nil && context.Cause(ctx) == nil {
-			return &instruments.Error{Op: "drain", Where: instruments.Where{Instrument: g.name}, Kind: instruments.Gone, Err: err}
-		}
-		return context.Cause(ctx)
-	}
-	before := batch.Len()
-	g.link.Discard(g.decoder.take(received, batch))
-	if batch.Len() > before {
-		batch.Arrived = g.link.LastArrival()
-	}
-	return context.Cause(ctx)
-}
-
-// Restart forgets what has arrived: the gyro has been switched.
-func (g *gyro) Restart() {
-	g.link.Discard(len(g.link.Peek()))
-	g.decoder.restart()
-}
-
-// Ask reads the newest frame.
-func (g *gyro) Ask(_ context.Context, reading string) (instruments.Pending, error) {
-	for i := range g.profile.decoding.readings {
-		if g.profile.decoding.readings[i].name == reading {
-			return frameAnswer{g, &g.profile.decoding.readings[i]}, nil
-		}
-	}
-	return nil, &instruments.Error{Op: "read " + reading, Where: instruments.Where{Instrument: g.name}, Kind: instruments.Refused, Err: errors.New("this gyro has no such reading")}
-}
-
-type frameAnswer struct {
-	gyro    *gyro
-	reading *frameReading
-}
-
-func (f frameAnswer) Take(context.Context) (instruments.Reading, error) {
-	d := f.gyro.decoder
-	if len(d.newest) == 0 {
-		return instruments.Reading{}, &instruments.Error{Op: "read " + f.reading.name, Where: instruments.Where{Instrument: f.gyro.name}, Kind: instruments.Timeout,
-			Err: errors.New("the gyro has sent no frame yet")}
-	}
-	x := float64(f.reading.of(d.newest, d.big)) * f.reading.scale
-	return instruments.Reading{Name: f.reading.name, Value: quantity.Of(x, f.reading.unit), At: f.gyro.link.LastArrival()}, nil
 }
