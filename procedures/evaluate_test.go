@@ -156,8 +156,8 @@ func TestEvaluate(t *testing.T) {
 	}
 	want := []string{
 		"1.1 [] polarity == 1: accept, ends true, by simple",
-		"2.1 [temperature 23 degC] bias between -2 2 deg/h: accept, ends false, by guarded",
-		"2.1 [temperature -40 degC] bias between -2 2 deg/h: accept, ends false, by guarded",
+		"2.1 [temperature 23 degC] bias between -2 and 2 deg/h: accept, ends false, by guarded",
+		"2.1 [temperature -40 degC] bias between -2 and 2 deg/h: accept, ends false, by guarded",
 		"2.2 [] shift at most 2.5 deg/h: accept, ends false, by guarded",
 		"2.3 [temperature -40 degC] bias at least 0 deg/h at temperature -40 degC: reject, ends false, by guarded",
 		"3.1 [temperature 23 degC] abs(sf_error) <= 20000: accept, ends false, by guarded",
@@ -320,5 +320,54 @@ func TestBenchFor(t *testing.T) {
 	}
 	if b.Instrument != "T1" {
 		t.Errorf("table %q", b.Instrument)
+	}
+}
+
+// TestEvaluateFromFile: recordings read back from their file give the same figures and judgements, bit for bit.
+func TestEvaluateFromFile(t *testing.T) {
+	p := plan(t, strings.Replace(forEvaluate, "figures:\n", `  - hold: position
+  - stage: starts
+    repeat: 3
+    as: cycle
+    steps:
+      - record: start
+        for: 2 s
+figures:
+  turn_on: {is: repeatability, of: start, over: cycle, measurand: sample, unit: deg/h}
+  start_bias: {is: bias, of: start, per: cycle, unit: deg/h}
+`, 1), Options{})
+	recs := made(p, 1)
+	path := t.TempDir() + "/trial"
+	w, err := recording.Create(path, recording.FileHead{Slot: "A", Part: "OG-12", Serial: "7"})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, r := range recs {
+		id, err := w.Begin(r.Section)
+		if err == nil {
+			err = w.Append(id, r.Counts, nil)
+		}
+		for _, s := range r.Readings {
+			for i := range s.At {
+				err = errors.Join(err, w.Reading(id, s.Name, s.Unit, s.At[i], s.Values[i]))
+			}
+		}
+		if err = errors.Join(err, w.End(id, r.Quality)); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if _, err := w.Close(); err != nil {
+		t.Fatal(err)
+	}
+	file, err := recording.Open(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	got, want := fmt.Sprintf("%+v", *evaluate(t, p, file.Recordings, 1)), fmt.Sprintf("%+v", *evaluate(t, p, recs, 1))
+	if got != want {
+		t.Errorf("from the file\n%s\nfrom memory\n%s", got, want)
+	}
+	if strings.Contains(got, "was not made") {
+		t.Error("a recording was lost on the way through the file")
 	}
 }

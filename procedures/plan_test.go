@@ -209,11 +209,11 @@ func TestVariantsAndParameters(t *testing.T) {
 		set        map[string]string
 		want       string
 	}{
-		{"no part", "", nil, "dwell 20 s, most 2 deg/h; rest 20s; bias at most most; bias at most 3 deg/h"},
-		{"as it stands", "OG-12", nil, "dwell 20 s, most 2 deg/h; rest 20s; bias at most most; bias at most 3 deg/h"},
-		{"variant", "OG-15", nil, "dwell 40 s, most 5 deg/h; rest 40s; bias at most most; bias at most 9 deg/h"},
-		{"set", "OG-15", map[string]string{"dwell": "1 min"}, "dwell 1 min (set), most 5 deg/h; rest 1m0s; bias at most most; bias at most 9 deg/h"},
-		{"set without a space", "OG-12", map[string]string{"dwell": "30s"}, "dwell 30 s (set), most 2 deg/h; rest 30s; bias at most most; bias at most 3 deg/h"},
+		{"no part", "", nil, "dwell 20 s, most 2 deg/h; rest 20s; bias at most 2 deg/h; bias at most 3 deg/h"},
+		{"as it stands", "OG-12", nil, "dwell 20 s, most 2 deg/h; rest 20s; bias at most 2 deg/h; bias at most 3 deg/h"},
+		{"variant", "OG-15", nil, "dwell 40 s, most 5 deg/h; rest 40s; bias at most 5 deg/h; bias at most 9 deg/h"},
+		{"set", "OG-15", map[string]string{"dwell": "1 min"}, "dwell 1 min (set), most 5 deg/h; rest 1m0s; bias at most 5 deg/h; bias at most 9 deg/h"},
+		{"set without a space", "OG-12", map[string]string{"dwell": "30s"}, "dwell 30 s (set), most 2 deg/h; rest 30s; bias at most 2 deg/h; bias at most 3 deg/h"},
 	} {
 		t.Run(c.name, func(t *testing.T) {
 			p := plan(t, withVariants, Options{Part: c.part, Parameters: c.set})

@@ -137,19 +137,22 @@ func (p *planner) bounded(l *Limit, m document.Map) {
 		p.boundsPer(b, m, node)
 		return
 	}
-	l.Require = fmt.Sprintf("%s %s %s", name, strings.ReplaceAll(b.key, "-", " "), inWords(b.key, node.Text()))
+	l.Require = fmt.Sprintf("%s %s %s", name, strings.ReplaceAll(b.key, "-", " "), p.inWords(b.key, node))
 	if len(b.at) > 0 {
 		l.Require += " at " + b.at.String()
 	}
 	p.boundPart(b, node, b.at)
 }
 
-// inWords says the two bounds of a between as people do: -2 and 2 deg/h.
-func inWords(key, bounds string) string {
-	if key != "between" {
-		return bounds
+// inWords says a bound as people do: a parameter by its value, the two of a between as -2 and 2 deg/h.
+func (p *planner) inWords(key string, node *document.Node) string {
+	if v, ok := p.scope.values[node.Text()]; ok {
+		return v.String()
 	}
-	return strings.Replace(bounds, " ", " and ", 1)
+	if key == "between" {
+		return strings.Replace(node.Text(), " ", " and ", 1)
+	}
+	return node.Text()
 }
 
 func (list conditions) String() string {
@@ -224,7 +227,7 @@ func (p *planner) boundsPer(b bound, m document.Map, node *document.Node) {
 				covered[key] = true
 			}
 		}
-		said = append(said, fmt.Sprintf("%s at %s", e.Value.Text(), v))
+		said = append(said, fmt.Sprintf("%s at %s", p.inWords(b.key, e.Value), v))
 		p.boundPart(b, e.Value, at)
 	}
 	if node.Form != document.Mapping {
