@@ -158,6 +158,9 @@ func TestVirtualGyros(t *testing.T) {
 				t.Fatal(err)
 			}
 			instrumentstest.TestGyro(t, func(testing.TB) (instruments.Gyro, instruments.Clock) { return gyro, w })
+			if err := w.Sleep(ctx, time.Second); err != nil {
+				t.Fatal(err)
+			}
 			var batch instruments.Batch
 			rate, err := instruments.Read(ctx, gyro, "gyro.rate")
 			if err != nil {
