@@ -71,6 +71,11 @@ func (m *memory) look() {
 	if m.onLook != nil && m.gone == nil {
 		m.onLook(now)
 	}
+	m.arrive(now)
+}
+
+// arrive takes from the line what has reached the host by now.
+func (m *memory) arrive(now time.Time) {
 	due := 0
 	for ; due < len(m.coming) && !m.coming[due].at.After(now); due++ {
 		m.in.put(m.coming[due].bytes, m.coming[due].at)
@@ -145,7 +150,9 @@ func (d *Device) Deliver(p []byte, at time.Time) {
 	if n := len(m.coming); n > 0 && at.Before(m.coming[n-1].at) {
 		at = m.coming[n-1].at
 	}
-	if len(m.coming) == 0 && !at.After(m.pacer.Now()) {
+	now := m.pacer.Now()
+	m.arrive(now)
+	if len(m.coming) == 0 && !at.After(now) {
 		m.in.put(p, at)
 		return
 	}
