@@ -15,6 +15,7 @@ import (
 	"github.com/rogpeppe/go-internal/txtar"
 
 	"proofrate/instruments"
+	"proofrate/instruments/profile"
 	"proofrate/limits/document"
 )
 
@@ -175,6 +176,23 @@ func TestProfileOfAFileIsAskedForAsItIsNamed(t *testing.T) {
 	})
 	if len(asked) != 1 || asked[0] != "parts/supply.yaml" || len(wrong) != 1 {
 		t.Errorf("asked for %v; %v", asked, wrong.Err())
+	}
+}
+
+// TestSerialLinkNeedsSettings: a profile for TCP alone does not say how a serial port is set.
+func TestSerialLinkNeedsSettings(t *testing.T) {
+	text := base(t)
+	text = strings.ReplaceAll(text[:strings.Index(text, "virtual:\n  ambient")], "link: virtual:", "link: serial:/dev/tty-")
+	text = strings.Replace(text, "profile: supply-scpi", "profile: ./supply.yaml", 1)
+	supply, _ := profile.Shipped("supply-scpi")
+	before, after, found := strings.Cut(string(supply), "\nserial:")
+	_, after, _ = strings.Cut(after, "\n")
+	if !found {
+		t.Fatal("the shipped supply has no serial settings to take out")
+	}
+	_, _, wrong := Load("base.yaml", []byte(text), func(string) ([]byte, error) { return []byte(before + "\n" + after), nil })
+	if len(wrong) != 1 || wrong[0].Code != "no-serial-settings" {
+		t.Errorf("found %v", wrong)
 	}
 }
 
