@@ -7,6 +7,7 @@ import (
 	"time"
 
 	"proofrate/instruments"
+	"proofrate/limits/quantity"
 	"proofrate/limits/source"
 )
 
@@ -21,6 +22,7 @@ func (p *Plan) CheckBench(d *instruments.Description) source.List {
 		c.slot(s)
 	}
 	c.readings()
+	c.calibration()
 	c.list.Sort()
 	return c.list
 }
@@ -151,6 +153,35 @@ func (c *benchCheck) readings() {
 			check(s.Span, name)
 		}
 	})
+}
+
+// calibration checks that the table's rate has a certificate's entry where a sweep leans on it: without one, its
+// uncertainty would read as none. Figures take it relative to the rate.
+func (c *benchCheck) calibration() {
+	for _, f := range c.plan.Figures {
+		if !slices.Contains(f.Method.Needs, "rate") || f.Method.Name == "polarity" || c.bench.Table == nil {
+			continue
+		}
+		entry, ok := tableRate(c.bench)
+		switch {
+		case !ok:
+			c.cannot(f.Span, "has no calibration of table.rate; figure %s needs its uncertainty", f.Name)
+		case entry.Correction.Dimension() != quantity.Ratio || entry.U.Dimension() != quantity.Ratio || entry.Drift.Dimension() != quantity.Ratio:
+			c.cannot(f.Span, "states the calibration of table.rate as a rate; figure %s needs it relative, such as 20 ppm", f.Name)
+		}
+	}
+}
+
+// tableRate is the table's calibration entry for its rate.
+func tableRate(d *instruments.Description) (instruments.Calibration, bool) {
+	for _, i := range d.Instruments {
+		for _, entry := range i.Calibrations {
+			if i.Name == d.Table.Instrument && entry.Reading == "table.rate" {
+				return entry, true
+			}
+		}
+	}
+	return instruments.Calibration{}, false
 }
 
 // walk visits every step, inner ones too.

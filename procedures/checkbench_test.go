@@ -35,6 +35,28 @@ func bench() *instruments.Description {
 	}
 }
 
+// TestCheckCalibration: a sweep leans on the certificate of the table's rate.
+func TestCheckCalibration(t *testing.T) {
+	p := plan(t, forEvaluate, Options{})
+	for name, c := range map[string]struct {
+		change func(*instruments.Description)
+		want   string
+	}{
+		"there":    {func(*instruments.Description) {}, ""},
+		"none":     {func(d *instruments.Description) { d.Instruments[0].Calibrations = nil }, "bench test has no calibration of table.rate; figure sf_error needs its uncertainty"},
+		"as rates": {func(d *instruments.Description) { d.Instruments[0].Calibrations[0].U = of("0.001 deg/s") }, "bench test states the calibration of table.rate as a rate; figure sf_error needs it relative, such as 20 ppm"},
+	} {
+		t.Run(name, func(t *testing.T) {
+			d := bench()
+			c.change(d)
+			problems := p.CheckBench(d)
+			if c.want == "" && len(problems) > 0 || c.want != "" && (len(problems) != 1 || problems[0].Message != c.want) {
+				t.Errorf("got %v, want %s", problems, c.want)
+			}
+		})
+	}
+}
+
 const forBench = head + `guards:
   - {require: supply.current < 1.5}
   - {require: abs(table.rate) < 260}

@@ -168,15 +168,8 @@ func benchFor(d *instruments.Description, slot instruments.SlotID) reduce.Bench 
 	b.AxisEast, b.AxisNorth, b.AxisUp = b.Sense*axis[0], b.Sense*axis[1], b.Sense*axis[2]
 	b.AxisU = d.Table.AxisUncertainty.SI()
 	b.Creep, b.Instrument = d.Table.Creep.SI(), d.Table.Instrument
-	for _, i := range d.Instruments {
-		if i.Name != d.Table.Instrument {
-			continue
-		}
-		for _, c := range i.Calibrations {
-			if c.Reading == "table.rate" {
-				b.TableRate = reduce.Calibration{Correction: c.Correction.SI(), U: math.Hypot(c.U.SI()/c.K, c.Drift.SI())}
-			}
-		}
+	if c, ok := tableRate(d); ok {
+		b.TableRate = reduce.Calibration{Correction: c.Correction.SI(), U: math.Hypot(c.U.SI()/c.K, c.Drift.SI())}
 	}
 	return b
 }
@@ -270,14 +263,25 @@ func results(tasks []*task) []FigureElement {
 	return list
 }
 
-// parallel does the tasks on as many workers as there are processors.
+// parallel does the tasks on as many workers as there are processors. A task's panic becomes the caller's: whoever
+// holds the bench catches it there and makes the bench safe.
 func parallel(ctx context.Context, tasks []*task, do func(*task)) error {
 	next := make(chan *task)
 	var workers sync.WaitGroup
+	var once sync.Once
+	var broken any
+	guarded := func(t *task) {
+		defer func() {
+			if fault := recover(); fault != nil {
+				once.Do(func() { broken = fault })
+			}
+		}()
+		do(t)
+	}
 	for range min(runtime.GOMAXPROCS(0), len(tasks)) {
 		workers.Go(func() { // ends when next is closed
 			for t := range next {
-				do(t)
+				guarded(t)
 			}
 		})
 	}
@@ -289,6 +293,9 @@ func parallel(ctx context.Context, tasks []*task, do func(*task)) error {
 	}
 	close(next)
 	workers.Wait()
+	if broken != nil {
+		panic(broken)
+	}
 	return ctx.Err()
 }
 

@@ -371,3 +371,57 @@ figures:
 		t.Error("a recording was lost on the way through the file")
 	}
 }
+
+// TestParallelPanics: a fault in a task reaches the caller, and the other tasks are done.
+func TestParallelPanics(t *testing.T) {
+	tasks := make([]*task, 20)
+	for i := range tasks {
+		tasks[i] = &task{}
+	}
+	defer func() {
+		if fault := recover(); fault != "broken invariant" {
+			t.Errorf("recovered %v", fault)
+		}
+		for i, task := range tasks[1:] {
+			if task.got.Name != "done" {
+				t.Errorf("task %d was not done", i+1)
+			}
+		}
+	}()
+	err := parallel(t.Context(), tasks, func(one *task) {
+		if one == tasks[0] {
+			panic("broken invariant")
+		}
+		one.got.Name = "done"
+	})
+	t.Errorf("no panic, error %v", err)
+}
+
+// TestBoundsPerLabel: bounds that differ by a label's value judge each element by its own.
+func TestBoundsPerLabel(t *testing.T) {
+	before, _, _ := strings.Cut(forEvaluate, "limits:")
+	p := plan(t, before+`limits:
+  - clause: 4.1
+    figure: bias
+    per: temperature
+    between:
+      23 degC: 0.5 1.5 deg/h
+      -40 degC: -0.3 0.3 deg/h
+  - clause: 4.2
+    figure: raw_bias
+    at: {temperature: 23 degC}
+    at-least: 1.2 deg/h
+`, Options{})
+	var got []string
+	for _, j := range evaluate(t, p, made(p, 1), 1).Judgements {
+		got = append(got, fmt.Sprintf("%s [%s] %s: %s", j.Clause, j.Labels, j.Require, j.Verdict))
+	}
+	want := []string{
+		"4.1 [temperature 23 degC] bias between 0.5 and 1.5 deg/h at 23 degC, -0.3 and 0.3 deg/h at -40 degC: accept",
+		"4.1 [temperature -40 degC] bias between 0.5 and 1.5 deg/h at 23 degC, -0.3 and 0.3 deg/h at -40 degC: reject",
+		"4.2 [temperature 23 degC] raw_bias at least 1.2 deg/h at temperature 23 degC: reject",
+	}
+	if diff := cmp.Diff(got, want); diff != "" {
+		t.Errorf("judgements (-got +want):\n%s", diff)
+	}
+}
