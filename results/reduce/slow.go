@@ -5,7 +5,7 @@ import "math"
 // Flicker as a sum of first-order Markov processes, one a decade of correlation time, each of variance
 // v = B^2 ln(10)/pi: flat at (2 ln 2/pi) B^2 within 1.1 % inside the decades that are covered. The decades reach a
 // decade beyond what a sweep spans on each side.
-var markovTimesS = []float64{0.1, 1, 10, 100, 1e3, 1e4, 1e5}
+var markovTimesS = []float64{0.01, 0.1, 1, 10, 100, 1e3, 1e4, 1e5}
 
 // windows is the covariance of the means of slow noise over windows, in (rad/s)^2.
 //
