@@ -71,9 +71,10 @@ type condition struct {
 
 type conditions []condition
 
-// conditions reads `at: {temperature: 23 degC, visit: 1}`; visit belongs to the label before it.
-func (p *planner) conditions(m document.Map) conditions {
-	var list conditions
+// conditions reads `at: {temperature: 23 degC, visit: 1}`; visit belongs to the label before it. The second result is
+// false when some of it was refused.
+func (p *planner) conditions(m document.Map) (list conditions, sound bool) {
+	before := len(p.list)
 	for _, e := range p.entries(m.Node("at"), "at") {
 		if e.Key.Text() == "visit" {
 			n, err := strconv.Atoi(e.Value.Text())
@@ -95,7 +96,7 @@ func (p *planner) conditions(m document.Map) conditions {
 		}
 		list = append(list, condition{e.Key.Text(), v, 0, e.Key.Span})
 	}
-	return list
+	return list, len(p.list) == before
 }
 
 // fit says whether labels meet all conditions.
@@ -111,7 +112,7 @@ func (p *planner) elements(f *Figure, m document.Map) {
 	of := m.Text("of")
 	per, perSound := p.selectors(m, "per")
 	over, overSound := p.selectors(m, "over")
-	at := p.conditions(m)
+	at, atSound := p.conditions(m)
 	for _, s := range per {
 		f.labels = append(f.labels, s.String())
 	}
@@ -122,7 +123,7 @@ func (p *planner) elements(f *Figure, m document.Map) {
 		}
 		return
 	}
-	if !perSound || !overSound || !p.conditionsKnown(of, all, at) {
+	if !perSound || !overSound || !atSound || !p.conditionsKnown(of, all, at) {
 		return
 	}
 	all = slices.DeleteFunc(all, func(i int) bool { return !at.fit(p.plan.expected[i].labels) })

@@ -104,11 +104,11 @@ func (p *Plan) lean(name string, wanted map[string]bool) {
 		return
 	}
 	wanted[name] = true
-	if f.scaleFactor != "" {
-		p.lean(f.scaleFactor, wanted)
+	if f.ScaleFactor != "" {
+		p.lean(f.ScaleFactor, wanted)
 	}
-	if f.formula != nil {
-		for _, other := range f.formula.Figures() {
+	if f.Formula != nil {
+		for _, other := range f.Formula.Figures() {
 			p.lean(other, wanted)
 		}
 	}
@@ -225,9 +225,9 @@ func (e *evaluator) figures(ctx context.Context, wanted map[string]bool) ([]Figu
 			}
 			tasks = append(tasks, t)
 			switch {
-			case f.formula != nil:
+			case f.Formula != nil:
 				t.got.Method = "formula"
-			case f.scaleFactor != "":
+			case f.ScaleFactor != "":
 				leaning = append(leaning, t)
 			default:
 				plain = append(plain, t)
@@ -241,10 +241,10 @@ func (e *evaluator) figures(ctx context.Context, wanted map[string]bool) ([]Figu
 		}
 	}
 	for i, t := range tasks {
-		if t.figure.formula == nil || i > 0 && tasks[i-1].figure == t.figure {
+		if t.figure.Formula == nil || i > 0 && tasks[i-1].figure == t.figure {
 			continue // a series' formula is evaluated whole, at its first element
 		}
-		for _, got := range t.figure.formula.Evaluate(values(results(tasks)), t.figure.Unit, e.stream("figure", t.figure.Name, "")) {
+		for _, got := range t.figure.Formula.Evaluate(values(results(tasks)), t.figure.Unit, e.stream("figure", t.figure.Name, "")) {
 			for _, u := range tasks[i:] {
 				if u.figure == t.figure && elementKey(u.spec.Labels) == got.Labels {
 					u.got.Measured = got.Measured
@@ -302,7 +302,7 @@ func parallel(ctx context.Context, tasks []*task, do func(*task)) error {
 // reduce evaluates one element from its recordings and from figures that are done.
 func (e *evaluator) reduce(ctx context.Context, t *task, done []FigureElement) quantity.Measured {
 	f, spec := t.figure, t.spec
-	in := reduce.Input{Bench: e.bench, Gyro: e.gyro, Options: f.options, Seed: e.stream("figure", f.Name, elementKey(spec.Labels))}
+	in := reduce.Input{Bench: e.bench, Gyro: e.gyro, Options: f.Options, Seed: e.stream("figure", f.Name, elementKey(spec.Labels))}
 	for _, r := range spec.all() {
 		want := e.plan.expected[r]
 		if e.at[r] < 0 {
@@ -318,10 +318,10 @@ func (e *evaluator) reduce(ctx context.Context, t *task, done []FigureElement) q
 		last := len(in.Recordings) - 1
 		in.Recordings, in.Noise = in.Recordings[:last], in.Recordings[last:]
 	}
-	if f.scaleFactor != "" {
-		sf := leanOn(done, f.scaleFactor, spec.Labels)
+	if f.ScaleFactor != "" {
+		sf := leanOn(done, f.ScaleFactor, spec.Labels)
 		if sf.Void != "" {
-			return quantity.Voided(f.Unit, fmt.Sprintf("it leans on %s, which is void: %s", f.scaleFactor, sf.Void))
+			return quantity.Voided(f.Unit, fmt.Sprintf("it leans on %s, which is void: %s", f.ScaleFactor, sf.Void))
 		}
 		in.ScaleFactor = &sf
 	}

@@ -134,7 +134,7 @@ func (p *planner) reduced(f *Figure, m document.Map) {
 	if m.Stands("least") && m.Text("relative-to") != "reading" {
 		p.add(m.KeySpan("least"), "unfit-option", "state relative-to: reading", "least has a meaning only for a nonlinearity relative to reading")
 	}
-	f.options = reduce.Options{Measurand: m.Text("measurand"), Tau: m.Quantity("tau").SI(), Relative: m.Text("relative-to"),
+	f.Options = reduce.Options{Measurand: m.Text("measurand"), Tau: m.Quantity("tau").SI(), Relative: m.Text("relative-to"),
 		Least: m.Quantity("least").SI(), Unscaled: m.Has("scale")}
 	switch {
 	case m.Has("of"):
@@ -170,7 +170,7 @@ func (p *planner) scaleFactor(n document.Named) {
 			return
 		}
 	}
-	f.scaleFactor = name
+	f.ScaleFactor = name
 }
 
 // formulas compiles those figures that are computed, each after those that it names.
@@ -224,7 +224,7 @@ func (p *planner) formula(n document.Named) {
 		p.report(problems)
 		return
 	}
-	f.formula, f.labels = compiled, compiled.Labels()
+	f.Formula, f.labels = compiled, compiled.Labels()
 	f.Elements = p.elementsLike(f.labels, compiled.Figures())
 	p.figures[f.Name] = limits.FigureType{Unit: f.Unit, Labels: f.labels}
 	p.plan.Figures = append(p.plan.Figures, f)

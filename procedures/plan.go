@@ -152,18 +152,18 @@ func recordingKey(name string, labels recording.Labels) string {
 	return name + "|" + elementKey(labels)
 }
 
-// Figure is a figure with its elements worked out.
+// Figure is a figure with its elements worked out: of a method, or of a formula.
 type Figure struct {
-	Name     string
-	Method   reduce.Method // of a figure with `is`
-	Unit     quantity.Unit
-	Span     source.Span
-	Elements []ElementSpec
+	Name        string
+	Method      reduce.Method // with the zero Name where there is a Formula
+	Options     reduce.Options
+	ScaleFactor string // the figure that it takes the scale factor from; "" for none
+	Formula     *limits.Formula
+	Unit        quantity.Unit
+	Span        source.Span
+	Elements    []ElementSpec
 
-	options     reduce.Options
-	scaleFactor string // figure
-	formula     *limits.Formula
-	labels      []string // that index the series
+	labels []string // that index the series
 }
 
 // ElementSpec is one element: its labels, and the recordings it is reduced from.

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"os"
 	"regexp"
+	"slices"
 	"strings"
 	"testing"
 
@@ -11,6 +12,7 @@ import (
 
 	"proofrate/instruments"
 	"proofrate/limits/document"
+	"proofrate/results/reduce"
 )
 
 // TestReadmeTables: the tables of README.md are those that read the documents.
@@ -20,6 +22,7 @@ func TestReadmeTables(t *testing.T) {
 		t.Fatal(err)
 	}
 	is := between(t, string(was), "readings", readingsTable())
+	is = between(t, is, "catalogue", catalogueTable())
 	is = between(t, is, "keys", keyTables())
 	if *update {
 		if err := os.WriteFile("README.md", []byte(is), 0o644); err != nil {
@@ -53,6 +56,23 @@ func readingsTable() string {
 		fmt.Fprintf(&b, "| `%s` | %s | %s | %s |\n", k.Name, k.Unit, of, k.Doc)
 	}
 	b.WriteString("| `NAME.value` | its profile's | slot | a meter's reading |\n")
+	return b.String()
+}
+
+func catalogueTable() string {
+	var b strings.Builder
+	b.WriteString("| method | unit of | options | of gyros with | meaning | source |\n| --- | --- | --- | --- | --- | --- |\n")
+	for _, m := range reduce.Catalogue() {
+		options := slices.Clone(m.Options)
+		if slices.Contains(m.Needs, "over") {
+			options = append(options, "over")
+		}
+		output := "any output"
+		if m.Output != "" {
+			output = m.Output + " output"
+		}
+		fmt.Fprintf(&b, "| `%s` | %s | %s | %s | %s | %s |\n", m.Name, m.Unit.Dimension(), strings.Join(options, ", "), output, m.Doc, m.Source)
+	}
 	return b.String()
 }
 

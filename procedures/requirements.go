@@ -122,11 +122,12 @@ func (p *planner) bounded(l *Limit, m document.Map) {
 		p.add(l.Span, "wrong-limit", "give at-most, at-least or between", "the limit of clause %s has no bound", l.Clause)
 		return
 	}
-	b.at = p.conditions(m)
+	at, sound := p.conditions(m)
 	node := p.variantBound(b, m.Node(b.key))
-	if b.figure == nil {
+	if b.figure == nil || !sound {
 		return
 	}
+	b.at = at
 	for _, c := range b.at {
 		if !b.figure.over(c.name) {
 			p.noFigureLabel(c.span, b.figure, c.name)
