@@ -36,7 +36,7 @@ func (l *Limit) judge(values Values, element string, rule Rule, seed uint64) Jud
 	j.Margin, from = l.root.margin(values, element, look)
 	j.Unit = from.unit
 	j.UMargin = marginU(values, uses, func(look lookup) float64 {
-		m, _ := l.root.margin(values, element, look)
+		m, _ := from.margin(values, element, look) // that of the comparison which is nearest: the smallest of two has a kink
 		return m
 	})
 	j.Reason = with(values, uses)
