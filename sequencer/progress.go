@@ -104,6 +104,9 @@ func headline(s *engine.Status) string {
 }
 
 func number(x float64, format string) string {
+	if math.Abs(x) < 0.0005 {
+		x = 0 // no -0.000
+	}
 	text := fmt.Sprintf(format, x)
 	if math.IsNaN(x) {
 		return strings.Repeat(" ", max(0, len(text)-1)) + "-"

@@ -109,7 +109,7 @@ func (p *page) trial(t results.TrialReport) {
 				worst = j
 			}
 		}
-		fmt.Fprintf(table, "  %s\t%s\t%s\t%d\t%s\t%s\n", worst.Clause, worst.Require, found(worst), len(limit), margin(worst), worst.Verdict)
+		fmt.Fprintf(table, "  %s\t%s\t%s\t%d\t%s\t%s\n", worst.Clause, worst.Require, shown(worst), len(limit), margin(worst), worst.Verdict)
 	}
 	table.Flush()
 	for _, line := range strings.Split(strings.TrimRight(b.String(), "\n"), "\n") {
@@ -120,9 +120,10 @@ func (p *page) trial(t results.TrialReport) {
 	}
 }
 
-// why says of a limit that is missed or cannot be told what was found where it came out worst, and in how many elements.
+// why says of a limit that is not met what was found where it came out worst, and in how many elements; of one that was
+// not measured the reason of the first.
 func (p *page) why(limit []results.JudgementReport) {
-	for _, verdict := range []string{"reject", "undecided"} {
+	for _, verdict := range []string{"reject", "undecided", "void"} {
 		var worst *results.JudgementReport
 		n := 0
 		for i, j := range limit {
@@ -138,7 +139,11 @@ func (p *page) why(limit []results.JudgementReport) {
 		}
 		many := ""
 		if len(limit) > 1 {
-			many = fmt.Sprintf(" in %d of %d, worst", n, len(limit))
+			many = fmt.Sprintf(" in %d of %d, %s", n, len(limit), map[bool]string{true: "first", false: "worst"}[verdict == "void"])
+		}
+		if verdict == "void" {
+			p.linef("  VOID by clause %s%s%s: %s", worst.Clause, many, where(worst.Place), found(*worst))
+			continue
 		}
 		p.linef("  %s by clause %s%s%s: %s; required is %s%s", strings.ToUpper(verdict), worst.Clause, many, where(worst.Place), found(*worst), worst.Require, odds(*worst))
 	}
@@ -146,6 +151,14 @@ func (p *page) why(limit []results.JudgementReport) {
 
 // found is the figures that a judgement rests on, or why it is void.
 func found(j results.JudgementReport) string { return strings.TrimPrefix(j.Reason, "with ") }
+
+// shown is found, short enough for a column: the reason of what is void stands below the table.
+func shown(j results.JudgementReport) string {
+	if j.Verdict == "void" {
+		return "-"
+	}
+	return found(j)
+}
 
 func margin(j results.JudgementReport) string {
 	if j.Margin == nil || j.UMargin == nil || *j.UMargin == 0 {
