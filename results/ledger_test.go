@@ -457,6 +457,9 @@ func TestBrokenOff(t *testing.T) {
 	again.Close()
 
 	r.lock.Unlock() // as when the process dies
+	if rows, _ := l.History(context.Background(), Filter{}); len(rows) != 1 || rows[0].Verdict != "void" || rows[0].Outcome != BrokenOff {
+		t.Errorf("after its process has died: %+v", rows)
+	}
 	again, err = OpenLedger(dir, keys)
 	if err != nil {
 		t.Fatal(err)
@@ -468,6 +471,39 @@ func TestBrokenOff(t *testing.T) {
 	}
 	sound(t, again)
 	l.Close()
+}
+
+// TestManyOpenAtOnce: of several programs that make a ledger and run at once, all succeed and the chain is whole.
+func TestManyOpenAtOnce(t *testing.T) {
+	dir, keys := filepath.Join(t.TempDir(), "ledger"), filepath.Join(t.TempDir(), "keys")
+	failures := make(chan error, 8)
+	for i := range cap(failures) {
+		go func() {
+			l, err := OpenLedger(dir, keys)
+			if err == nil {
+				var r *OpenRun
+				if r, err = l.Begin(started(fmt.Sprint(i))); err == nil {
+					_, err = r.Seal(RunEnd{Outcome: "completed"})
+				}
+				l.Close()
+			}
+			failures <- err
+		}()
+	}
+	for range cap(failures) {
+		if err := <-failures; err != nil {
+			t.Error(err)
+		}
+	}
+	l, err := ReadLedger(dir)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer l.Close()
+	sound(t, l)
+	if rows, _ := l.History(context.Background(), Filter{}); len(rows) != cap(failures) {
+		t.Errorf("%d trials", len(rows))
+	}
 }
 
 // TestForeignDatabases are refused and left as they are.

@@ -7,6 +7,10 @@ import (
 	"fmt"
 	"strings"
 	"time"
+
+	"github.com/gofrs/flock"
+
+	"proofrate/limits"
 )
 
 // Filter narrows a history. Empty fields do not.
@@ -42,7 +46,10 @@ func (l *Ledger) History(ctx context.Context, f Filter) ([]Row, error) {
 	}
 	for _, e := range open {
 		for _, t := range e.Trials {
-			row := Row{e.Run, e.Started, e.Procedure.Name, e.Procedure.Revision, t.Slot, t.Part, t.Serial, e.Operator, "open", "open"}
+			row := Row{e.Run, toSecond(e.Started), e.Procedure.Name, e.Procedure.Revision, t.Slot, t.Part, t.Serial, e.Operator, "open", e.Outcome}
+			if e.Outcome == BrokenOff {
+				row.Verdict = limits.Void.String()
+			}
 			if f.takes(row) {
 				rows = append(rows, row)
 			}
@@ -83,6 +90,15 @@ func (l *Ledger) History(ctx context.Context, f Filter) ([]Row, error) {
 		rows = append(rows, r)
 	}
 	return rows, explained(found.Err())
+}
+
+// toSecond cuts a time of the wall to its seconds.
+func toSecond(started string) string {
+	t, err := time.Parse(time.RFC3339Nano, started)
+	if err != nil {
+		return started
+	}
+	return t.UTC().Format(time.RFC3339)
 }
 
 // globbed keeps only * of SQLite's patterns.
@@ -126,7 +142,8 @@ func globs(pattern, text string) bool {
 	return text == ""
 }
 
-// open gives the runs that are not sealed, the newest first.
+// open gives the runs that are not sealed, the newest first, each as "open", or as broken off if its process has died
+// and nobody has sealed it yet.
 func (l *Ledger) open(ctx context.Context) ([]runEvidence, error) {
 	rows, err := l.read.QueryContext(ctx, "SELECT start FROM open_runs ORDER BY run DESC")
 	if err != nil {
@@ -142,6 +159,14 @@ func (l *Ledger) open(ctx context.Context) ([]runEvidence, error) {
 		var e runEvidence
 		if err := json.Unmarshal([]byte(text), &e); err != nil {
 			return nil, err
+		}
+		e.Outcome = "open"
+		lock := flock.New(l.recordings(e.Run, lockFile))
+		if free, err := lock.TryRLock(); err == nil && free {
+			e.Outcome, e.Reason = BrokenOff, brokenReason
+			if err := lock.Unlock(); err != nil {
+				return nil, err
+			}
 		}
 		list = append(list, e)
 	}
@@ -249,9 +274,7 @@ func (l *Ledger) Show(ctx context.Context, run string) (*RunReport, error) {
 		}
 		for _, e := range open {
 			if strings.HasPrefix(e.Run, run) {
-				r := e.report()
-				r.Outcome = "open"
-				reports = append(reports, r)
+				reports = append(reports, e.report())
 			}
 		}
 	}

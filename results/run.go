@@ -52,6 +52,12 @@ type TrialEnd struct {
 	Reason     string
 }
 
+// BrokenOff is the outcome of a run whose process died.
+const (
+	BrokenOff    = "broken-off"
+	brokenReason = "the program ended during the run"
+)
+
 // Sealed says where a run stands in the chain.
 type Sealed struct {
 	Number int
@@ -272,7 +278,7 @@ func (l *Ledger) sealOneBroken(start string) error {
 	if err := json.Unmarshal([]byte(start), &e); err != nil {
 		return err
 	}
-	e.Outcome, e.Reason = "broken-off", "the program ended during the run"
+	e.Outcome, e.Reason = BrokenOff, brokenReason
 	e.Events = readEvents(l.recordings(e.Run, eventsFile))
 	if n := len(e.Events); n > 0 {
 		e.BenchSeconds = e.Events[n-1].At

@@ -14,6 +14,7 @@ import (
 	"path/filepath"
 	"sync"
 
+	"github.com/gofrs/flock"
 	sqlite3 "github.com/mattn/go-sqlite3"
 )
 
@@ -57,6 +58,12 @@ func OpenLedger(dir, keyDir string) (*Ledger, error) {
 	if err := os.MkdirAll(filepath.Join(dir, "recordings"), 0o755); err != nil {
 		return nil, fmt.Errorf("ledger %s: %w; choose a folder that can be written with --ledger", dir, err)
 	}
+	// One at a time: SQLite refuses to turn on its write-ahead log while another does, and waits for nobody then.
+	opening := flock.New(filepath.Join(dir, "ledger.lock"))
+	if err := opening.Lock(); err != nil {
+		return nil, fmt.Errorf("ledger %s: %w; choose a folder that can be written with --ledger", dir, err)
+	}
+	defer opening.Unlock()
 	l := &Ledger{dir: dir, keyDir: keyDir}
 	path, err := filepath.Abs(filepath.Join(dir, "ledger.db"))
 	if err != nil {
@@ -99,7 +106,11 @@ func ReadLedger(dir string) (*Ledger, error) {
 	if err := l.reader(path); err != nil {
 		return nil, err
 	}
-	if err := l.ours(l.read); err != nil {
+	application, version, err := versions(l.read)
+	if err == nil {
+		err = ours(application, version)
+	}
+	if err != nil {
 		l.Close()
 		return nil, fmt.Errorf("ledger %s: %w", dir, explained(err))
 	}
@@ -125,8 +136,13 @@ func (l *Ledger) Close() error {
 	return errors.Join(errs...)
 }
 
+// asker is a database or a transaction.
+type asker interface {
+	QueryRow(query string, args ...any) *sql.Row
+}
+
 // versions reads application_id and user_version.
-func versions(db *sql.DB) (application, version int, err error) {
+func versions(db asker) (application, version int, err error) {
 	if err = db.QueryRow("PRAGMA application_id").Scan(&application); err != nil {
 		return 0, 0, err
 	}
@@ -135,11 +151,8 @@ func versions(db *sql.DB) (application, version int, err error) {
 }
 
 // ours refuses a database of another program or of a newer version.
-func (l *Ledger) ours(db *sql.DB) error {
-	application, version, err := versions(db)
+func ours(application, version int) error {
 	switch {
-	case err != nil:
-		return err
 	case application != applicationID:
 		return errors.New("ledger.db is a database of another program")
 	case version > len(migrations()):
@@ -148,39 +161,42 @@ func (l *Ledger) ours(db *sql.DB) error {
 	return nil
 }
 
-// migrate brings the schema up to date, each step in a transaction of its own.
+// migrate brings the schema up to date in one transaction, which begins before the version is read: of two programs
+// that make a ledger at once, the second finds it made.
 func (l *Ledger) migrate() error {
-	application, version, err := versions(l.write)
-	if err != nil {
-		return err
-	}
-	if application == 0 && version == 0 {
-		var tables int
-		if err := l.write.QueryRow("SELECT count(*) FROM sqlite_schema").Scan(&tables); err != nil {
-			return err
-		}
-		if tables > 0 {
-			return errors.New("ledger.db is a database of another program")
-		}
-	} else if err := l.ours(l.write); err != nil {
-		return err
-	}
-	for i, name := range migrations() {
-		if i < version {
-			continue
-		}
-		text, err := schema.ReadFile(name)
+	return l.transaction(func(tx *sql.Tx) error {
+		application, version, err := versions(tx)
 		if err != nil {
 			return err
 		}
-		if err := l.transaction(func(tx *sql.Tx) error {
-			_, err := tx.Exec(string(text) + fmt.Sprintf("\nPRAGMA application_id = %d; PRAGMA user_version = %d;", applicationID, i+1))
+		if application == 0 && version == 0 {
+			var tables int
+			if err := tx.QueryRow("SELECT count(*) FROM sqlite_schema").Scan(&tables); err != nil {
+				return err
+			}
+			if tables > 0 {
+				return errors.New("ledger.db is a database of another program")
+			}
+		} else if err := ours(application, version); err != nil {
 			return err
-		}); err != nil {
-			return fmt.Errorf("schema step %s: %w", name, err)
 		}
-	}
-	return nil
+		for i, name := range migrations() {
+			if i < version {
+				continue
+			}
+			text, err := schema.ReadFile(name)
+			if err != nil {
+				return err
+			}
+			if _, err := tx.Exec(string(text)); err != nil {
+				return fmt.Errorf("schema step %s: %w", name, err)
+			}
+			if _, err := tx.Exec(fmt.Sprintf("PRAGMA application_id = %d; PRAGMA user_version = %d", applicationID, i+1)); err != nil {
+				return fmt.Errorf("schema step %s: %w", name, err)
+			}
+		}
+		return nil
+	})
 }
 
 // transaction does what fn does, whole or not at all.

@@ -99,6 +99,10 @@ func summary(t results.TrialReport) string {
 // trial writes a gyro's limits, of each the element that came out worst, and why those that are not met are not.
 func (p *page) trial(t results.TrialReport) {
 	p.linef("slot %s  %s %s  %s", t.Slot, t.Part, t.Serial, strings.ToUpper(t.Verdict))
+	if len(t.Judgements) == 0 {
+		p.linef("  nothing was judged%s", map[bool]string{true: "", false: ": " + t.Reason}[t.Reason == ""])
+		return
+	}
 	var b strings.Builder
 	table := tabwriter.NewWriter(&b, 0, 0, 2, ' ', 0)
 	fmt.Fprintln(table, "  clause\trequirement\tfound, worst of n\tn\tmargin\tverdict")
