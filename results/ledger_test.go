@@ -568,6 +568,34 @@ func TestPragmasHoldOnEveryConnection(t *testing.T) {
 	}
 }
 
+// TestViewsAreAsDocumented: README.md names every view's columns.
+func TestViewsAreAsDocumented(t *testing.T) {
+	l, _ := opened(t)
+	carriedOut(t, l, "100")
+	text, err := os.ReadFile("README.md")
+	if err != nil {
+		t.Fatal(err)
+	}
+	for view, want := range map[string]int{"trials": 1, "figures_by_trial": 2, "judgements_by_trial": 2} {
+		rows, err := dump(l.read.Query("SELECT * FROM " + view))
+		if err != nil || len(rows) != want {
+			t.Errorf("%s: %d rows, %v", view, len(rows), err)
+		}
+		found, err := l.read.Query("SELECT * FROM " + view)
+		if err != nil {
+			t.Fatal(err)
+		}
+		columns, err := found.Columns()
+		found.Close()
+		if err != nil {
+			t.Fatal(err)
+		}
+		if !strings.Contains(string(text), "| `"+view+"` |") || !strings.Contains(string(text), "| "+strings.Join(columns, ", ")+" |") {
+			t.Errorf("README.md does not say that %s has the columns %s", view, strings.Join(columns, ", "))
+		}
+	}
+}
+
 // TestNonFiniteIsRefused: SQLite would store NaN as NULL in silence.
 func TestNonFiniteIsRefused(t *testing.T) {
 	l, _ := opened(t)
