@@ -6,6 +6,7 @@ import (
 	"math"
 	"sort"
 	"strings"
+	"sync"
 	"unicode/utf8"
 
 	"github.com/expr-lang/expr"
@@ -16,14 +17,37 @@ import (
 	"proofrate/limits/source"
 )
 
-// Guard is a compiled condition over readings, each named as in supply.current. It runs on expr's machine. A Guard is
-// not for use by several goroutines at once.
+// Guard is a compiled condition over readings, each named as in supply.current. It runs on expr's machine. Several
+// goroutines may use it at once: a program may be shared, a machine and its environment may not.
 type Guard struct {
 	text     string
-	readings []string
+	readings []reading
+	names    []string
 	program  *vm.Program
-	machine  vm.VM
-	env      map[string]map[string]float64
+	idle     sync.Pool // of *guardMachine
+}
+
+// reading is a name taken apart: supply.current.
+type reading struct{ name, part, of string }
+
+// guardMachine is one machine with an environment to fill.
+type guardMachine struct {
+	machine vm.VM
+	parts   map[string]map[string]float64
+	env     map[string]any
+}
+
+func (g *Guard) newMachine() any {
+	m := &guardMachine{parts: map[string]map[string]float64{}, env: map[string]any{}}
+	m.machine.MemoryBudget = guardMemoryMax
+	for _, r := range g.readings {
+		if m.parts[r.part] == nil {
+			m.parts[r.part] = map[string]float64{}
+			m.env[r.part] = m.parts[r.part]
+		}
+		m.parts[r.part][r.of] = 0
+	}
+	return m
 }
 
 // Bounds of a guard's machine.
@@ -44,19 +68,13 @@ func CompileGuard(at Place, known []string) (*Guard, source.List) {
 		w.problems.Sort()
 		return nil, w.problems
 	}
-	g := &Guard{text: at.Text, env: map[string]map[string]float64{}}
+	g := &Guard{text: at.Text, names: w.named}
+	g.idle.New = g.newMachine
 	for _, name := range w.named {
-		part, reading, _ := strings.Cut(name, ".")
-		if g.env[part] == nil {
-			g.env[part] = map[string]float64{}
-		}
-		g.env[part][reading] = 0
-		g.readings = append(g.readings, name)
+		part, of, _ := strings.Cut(name, ".")
+		g.readings = append(g.readings, reading{name, part, of})
 	}
-	env := map[string]any{}
-	for part, readings := range g.env {
-		env[part] = readings
-	}
+	env := g.newMachine().(*guardMachine).env
 	program, err := expr.Compile(at.Text, expr.Env(env), expr.AsBool(), expr.WarnOnAny(), expr.DisableAllBuiltins(), expr.EnableBuiltin("abs"),
 		expr.EnableBuiltin("min"), expr.EnableBuiltin("max"), expr.MaxNodes(guardNodesMax))
 	if err != nil {
@@ -68,12 +86,11 @@ func CompileGuard(at Place, known []string) (*Guard, source.List) {
 		return nil, problems
 	}
 	g.program = program
-	g.machine.MemoryBudget = guardMemoryMax
 	return g, nil
 }
 
 // Readings are the readings that the guard names, sorted.
-func (g *Guard) Readings() []string { return g.readings }
+func (g *Guard) Readings() []string { return g.names }
 
 // String is the condition.
 func (g *Guard) String() string { return g.text }
@@ -81,19 +98,16 @@ func (g *Guard) String() string { return g.text }
 // Holds tells whether the condition holds. A reading that is absent or not finite breaks the guard, whatever the
 // condition says of it: to expr, not (NaN > 1) is true.
 func (g *Guard) Holds(readings map[string]float64) (bool, error) {
-	for _, name := range g.readings {
-		x, ok := readings[name]
+	m := g.idle.Get().(*guardMachine)
+	defer g.idle.Put(m)
+	for _, r := range g.readings {
+		x, ok := readings[r.name]
 		if !ok || math.IsNaN(x) || math.IsInf(x, 0) {
 			return false, nil
 		}
-		part, reading, _ := strings.Cut(name, ".")
-		g.env[part][reading] = x
+		m.parts[r.part][r.of] = x
 	}
-	env := make(map[string]any, len(g.env))
-	for part, values := range g.env {
-		env[part] = values
-	}
-	got, err := g.machine.Run(g.program, env)
+	got, err := m.machine.Run(g.program, m.env)
 	if err != nil {
 		return false, fmt.Errorf("guard %q: %w", g.text, err)
 	}

@@ -244,7 +244,7 @@ func (e *evaluator) figures(ctx context.Context, wanted map[string]bool) ([]Figu
 		if t.figure.Formula == nil || i > 0 && tasks[i-1].figure == t.figure {
 			continue // a series' formula is evaluated whole, at its first element
 		}
-		for _, got := range t.figure.Formula.Evaluate(values(results(tasks)), t.figure.Unit, e.stream("figure", t.figure.Name, "")) {
+		for _, got := range t.figure.Formula.Evaluate(Values(results(tasks)), t.figure.Unit, e.stream("figure", t.figure.Name, "")) {
 			for _, u := range tasks[i:] {
 				if u.figure == t.figure && elementKey(u.spec.Labels) == got.Labels {
 					u.got.Measured = got.Measured
@@ -354,8 +354,8 @@ func leanOn(done []FigureElement, name string, labels recording.Labels) quantity
 	panic(fmt.Sprintf("procedures: figure %s was planned for %s and is not among those done", name, labels))
 }
 
-// values gives figures the form that limits take.
-func values(figures []FigureElement) limits.Values {
+// Values gives figures the form that limits take.
+func Values(figures []FigureElement) limits.Values {
 	v := limits.Values{}
 	for _, f := range figures {
 		v[f.Name] = append(v[f.Name], limits.Element{Labels: elementKey(f.Labels), Measured: f.Measured})
@@ -365,7 +365,7 @@ func values(figures []FigureElement) limits.Values {
 
 // judge judges the wanted limits.
 func (e *evaluator) judge(figures []FigureElement, wanted func(Limit) bool) []Judgement {
-	all := values(figures)
+	all := Values(figures)
 	labels := map[string]recording.Labels{}
 	for _, f := range figures {
 		labels[elementKey(f.Labels)] = f.Labels

@@ -283,3 +283,12 @@ func (f *noiseFit) refits(seed uint64, count int) []coefficients {
 }
 
 const refitStream = 0x7265666974 // "refit"
+
+// StabilityTaus is the grid of averaging times, in s, on which the bias instability of so many samples is read.
+func StabilityTaus(samples int, intervalS float64) []float64 {
+	var taus []float64
+	for _, m := range averaging(samples/tauParts, tauPerDecade) {
+		taus = append(taus, float64(m)*intervalS)
+	}
+	return taus
+}
