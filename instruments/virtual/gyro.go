@@ -194,7 +194,7 @@ func (g *gyro) block(n int, end int64, still bool) {
 		bias := y[i] + kept[i]
 		y[i] = g.scale*g.cubic.output(w) + bias
 		if g.trace != nil {
-			g.trace.output(y[i], bias)
+			g.trace.output(y[i], bias, kept[i])
 		}
 	}
 	g.finish(end, y)

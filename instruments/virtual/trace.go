@@ -8,6 +8,7 @@ type trace struct{ sessions []*session }
 type session struct {
 	start                 int64 // ns
 	inputs, outputs, bias runs
+	kept                  runs      // of bias, what the mechanism keeps from its past
 	slowSum               []float64 // of all frames up to and with this one
 }
 
@@ -22,10 +23,11 @@ func (t *trace) input(in []float64) {
 	}
 }
 
-func (t *trace) output(y, bias float64) {
+func (t *trace) output(y, bias, kept float64) {
 	s := t.last()
 	s.outputs.add(y)
 	s.bias.add(bias)
+	s.kept.add(kept)
 }
 
 func (t *trace) slow(x float64) {

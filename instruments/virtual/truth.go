@@ -59,11 +59,15 @@ type Window struct {
 	Input         float64 // true rate about the input axis, the Earth's included
 	Deterministic float64 // noise-free output: S (w + nl(w)) and the biases
 	Bias          float64 // of that, what does not come from the input
+	Kept          float64 // of Bias, what is left of earlier inputs: hysteresis
 	Slow          float64 // flicker and random walk, beside Deterministic
 }
 
 // Output is the mean of everything but white noise and quantisation.
 func (w Window) Output() float64 { return w.Deterministic + w.Slow }
+
+// Response is what comes from the input, now and before: the scale factor's part of the output.
+func (w Window) Response() float64 { return w.Deterministic - w.Bias + w.Kept }
 
 // TrueBias is the output at no input.
 func (w Window) TrueBias() float64 { return w.Bias + w.Slow }
@@ -96,7 +100,7 @@ func (t *Truth) Window(start time.Time, first uint64, n int) (Window, error) {
 	from := int(first)
 	begin := s.start + int64(first)*framePeriodNs
 	return Window{From: moment(begin), To: moment(begin + int64(n)*framePeriodNs), Input: s.inputs.mean(from, n),
-		Deterministic: s.outputs.mean(from, n), Bias: s.bias.mean(from, n), Slow: meanOfSums(s.slowSum, from, n)}, nil
+		Deterministic: s.outputs.mean(from, n), Bias: s.bias.mean(from, n), Kept: s.kept.mean(from, n), Slow: meanOfSums(s.slowSum, from, n)}, nil
 }
 
 func distance(a, b int64) int64 { return max(a-b, b-a) }

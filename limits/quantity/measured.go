@@ -119,8 +119,12 @@ func Voided(unit Unit, reason string) Measured {
 	return Measured{Value: n, U: n, DoF: n, Low: n, High: n, Unit: unit, Void: reason}
 }
 
-// Interval is the symmetric-in-probability interval that holds the truth with probability p.
+// Interval is the symmetric-in-probability interval that holds the truth with probability p; of a bound, all from zero
+// to the quantile of p.
 func (m Measured) Interval(p float64) (low, high float64) {
+	if m.Family == Bound && m.Void == "" {
+		return 0, m.Quantile(p)
+	}
 	return m.Quantile(0.5 - p/2), m.Quantile(0.5 + p/2)
 }
 

@@ -63,7 +63,16 @@ func (s signal) mean() float64 {
 		low, carry = bits.Add64(low, uint64(c), 0)
 		high, _ = bits.Add64(high, uint64(c>>63), carry)
 	}
-	sum := float64(int64(high))*0x1p64 + float64(low)
+	negative := int64(high) < 0
+	if negative { // the magnitude: a small negative sum has all its upper bits set
+		var borrow uint64
+		low, borrow = bits.Sub64(0, low, 0)
+		high, _ = bits.Sub64(0, high, borrow)
+	}
+	sum := float64(high)*0x1p64 + float64(low)
+	if negative {
+		sum = -sum
+	}
 	return sum / float64(len(s.counts)) * s.count
 }
 

@@ -4,6 +4,7 @@ import (
 	"encoding/csv"
 	"fmt"
 	"math"
+	"math/big"
 	"os"
 	"strconv"
 	"strings"
@@ -220,26 +221,21 @@ func TestSlowWindows(t *testing.T) {
 	}
 }
 
-// TestExactMean: a bias of 10^8 times the noise loses nothing in the sum.
+// TestExactMean: the sum is that of big-number arithmetic, for a bias of 10^12 times the noise, for small sums of either
+// sign, and for sums beyond an int64.
 func TestExactMean(t *testing.T) {
-	const n, big = 100_000, int64(1) << 40
-	counts := make([]int64, n)
-	for i := range counts {
-		counts[i] = big + int64(i%7) - 3
-	}
-	sum := int64(0)
-	for i := range counts {
-		sum += int64(i%7) - 3
-	}
-	s := signal{counts: counts, count: 1}
-	if got, want := s.mean()-float64(big), float64(sum)/n; math.Abs(got-want) > 1e-3 {
-		t.Errorf("mean less the bias is %g, exact is %g", got, want)
-	}
-	for i := range counts {
-		counts[i] = -counts[i]
-	}
-	if got := s.mean() + float64(big); math.Abs(got+float64(sum)/n) > 1e-3 {
-		t.Errorf("negated: %g", got)
+	for name, counts := range map[string][]int64{
+		"small negative": {-1, 0, 0, 0}, "small positive": {1, 0, 0, 0}, "none": {5, -5, 7, -7}, "large negative": {-1 << 40, 3 - 1<<40, -1 << 40, 1 - 1<<40},
+		"large positive": {1 << 40, 3 + 1<<40, 1 << 40, 1 + 1<<40}, "beyond": {math.MaxInt64, math.MaxInt64, math.MaxInt64, 5}, "below": {math.MinInt64, math.MinInt64, math.MinInt64, -5},
+	} {
+		sum := new(big.Int)
+		for _, c := range counts {
+			sum.Add(sum, big.NewInt(c))
+		}
+		want, _ := new(big.Rat).SetFrac(sum, big.NewInt(int64(len(counts)))).Float64()
+		if got := (signal{counts: counts, count: 1}).mean(); got != want {
+			t.Errorf("%s: %.17g, exact is %.17g", name, got, want)
+		}
 	}
 }
 

@@ -53,9 +53,14 @@ const largestDraws = 2000
 
 // largest measures a figure that is the largest of several noisy residuals, and so biased high.
 //
-// Draws of the outputs' noise e, from its covariance, are taken off the measured outputs: f(y - e) is spread as the
-// truth is, but higher once more by what noise makes. That amount, mean f(y - e) - f(y), is taken off twice: once for
-// the draws, once for the measured value. No draw goes below zero. The budget names the noise's share.
+// The noise of the outputs, e, adds to the residuals r as variances do: what noise alone makes is E = mean f(e)^2, where
+// f(e) is the figure of a sweep that is straight but for e. So
+//
+//	value^2 = max(f(y)^2 - E, 0),   draws^2 = max(f(y - e)^2 - 2 E, 0)
+//
+// since y - e has the noise twice, once measured and once drawn. Where the residuals stand out of the noise this takes
+// off next to nothing; where they do not, draws reach zero, as the truth may. The interval is theirs. The standard
+// uncertainty is the spread of value for a sweep whose residuals are as large as value says, with the noise once.
 func largest(in Input, figure func(Sweep) float64) quantity.Measured {
 	m, reason := sweepOf(in)
 	if m == nil {
@@ -71,7 +76,9 @@ func largest(in Input, figure func(Sweep) float64) quantity.Measured {
 	z := make([]float64, n)
 	moved := make(Sweep, n)
 	draws := make([]float64, largestDraws)
-	mean := 0.0
+	straight := make(Sweep, n)
+	line := m.Line()
+	alone := 0.0
 	for d := range draws {
 		for i := range z {
 			z[i] = random.NormFloat64()
@@ -81,19 +88,48 @@ func largest(in Input, figure func(Sweep) float64) quantity.Measured {
 			for j := 0; j <= i; j++ {
 				e += root.At(i, j) * z[j]
 			}
-			moved[i] = m.Sweep[i]
+			moved[i], straight[i] = m.Sweep[i], m.Sweep[i]
 			moved[i].Output -= e
+			straight[i].Output = line.Slope*m.Sweep[i].Input + line.Offset + e
 		}
 		draws[d] = figure(moved)
-		mean += draws[d] / largestDraws
+		f := figure(straight)
+		alone += f * f / largestDraws
 	}
-	excess := math.Max(mean-measured, 0)
 	for d := range draws {
-		draws[d] = math.Max(draws[d]-2*excess, 0)
+		draws[d] = math.Sqrt(math.Max(draws[d]*draws[d]-2*alone, 0))
 	}
-	result := quantity.Sample(draws, math.Max(measured-excess, 0), ratio, nil)
-	result.Budget = []quantity.Line{{Name: "noise and reading", Value: excess, U: result.U, Sensitivity: 1, Contribution: result.U, DoF: math.Inf(1)}}
+	value := math.Sqrt(math.Max(measured*measured-alone, 0))
+	result := quantity.Sample(draws, value, ratio, nil)
+	result.U = m.spread(figure, value/measured, alone, root, random)
+	result.Budget = []quantity.Line{{Name: "noise and reading", Value: math.Sqrt(alone), U: result.U, Sensitivity: 1, Contribution: result.U, DoF: math.Inf(1)}}
 	return result
+}
+
+// spread is the standard deviation of sqrt(max(f^2 - alone, 0)) over sweeps whose residuals are those measured times
+// shrunk, each with noise drawn anew.
+func (m *measuredSweep) spread(figure func(Sweep) float64, shrunk, alone float64, root *mat.TriDense, random *rand.Rand) float64 {
+	n := len(m.Sweep)
+	line := m.Line()
+	z, sweep := make([]float64, n), make(Sweep, n)
+	values := make([]float64, largestDraws)
+	for d := range values {
+		for i := range z {
+			z[i] = random.NormFloat64()
+		}
+		for i, p := range m.Sweep {
+			sweep[i] = p
+			straight := line.Slope*p.Input + line.Offset
+			sweep[i].Output = straight + shrunk*(p.Output-straight)
+			for j := 0; j <= i; j++ {
+				sweep[i].Output += root.At(i, j) * z[j]
+			}
+		}
+		f := figure(sweep)
+		values[d] = math.Sqrt(math.Max(f*f-alone, 0))
+	}
+	_, scatter := meanAndScatter(values)
+	return scatter
 }
 
 const largestStream = 0x6c617267657374 // "largest"

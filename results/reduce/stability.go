@@ -17,7 +17,8 @@ const refitCount = 1000
 //
 // The minimum of the fitted curve, since the lowest of many noisy points is biased low. Its distribution: the curve is
 // fitted anew to variances drawn under the fitted noise, and what the fit makes of its own truth is undone. If the
-// minimum lies at the end of the grid, averaging longer might have gone lower and the figure is an upper bound.
+// minimum lies at the end of the grid, of the fit or of more than a fortieth of those fitted anew, averaging longer might
+// have gone lower and the figure is an upper bound.
 // Source: IEEE Std 952-1997, annex C, C.1.3.
 func biasInstability(_ context.Context, in Input) quantity.Measured {
 	f, reason := fitOf(in)
@@ -37,12 +38,19 @@ func biasInstability(_ context.Context, in Input) quantity.Measured {
 		}
 		return math.Sqrt(least) / scale, at
 	}
+	end := len(f.tauS) - 1
 	value, at := lowest(f.got)
-	m := f.ratioDistribution(in.Seed, value, radPerS, "Allan variances", func(c coefficients) float64 { v, _ := lowest(c); return v })
-	if at == len(f.tauS)-1 {
-		m.Family, m.Upper = quantity.Bound, true
+	ends := 0
+	for _, c := range f.refits(in.Seed, refitCount) {
+		if _, at := lowest(c); at == end {
+			ends++
+		}
 	}
-	return m
+	if at == end || ends > refitCount/40 {
+		// The fit's own spread does not tell how much of a term it may have missed; the longest averaging time does.
+		return f.upper(value, 1/scale, end, radPerS)
+	}
+	return f.ratioDistribution(in.Seed, value, radPerS, "Allan variances", func(c coefficients) float64 { v, _ := lowest(c); return v })
 }
 
 // fitOf fits the noise of an input's one recording.
@@ -107,8 +115,13 @@ func (f *noiseFit) bound(term int, value float64, unit quantity.Unit) quantity.M
 	if term == termQ {
 		at = 0
 	}
-	chi := quantity.Chi(math.Sqrt(f.variance[at]), 0, f.dof[at], radPerS, nil)
-	high := chi.Quantile(0.95) / math.Sqrt(column(f.tauS[at])[term])
+	return f.upper(value, 1/math.Sqrt(column(f.tauS[at])[term]), at, unit)
+}
+
+// upper is the bound that one averaging time allows: scale times the chi-square bound of its deviation.
+func (f *noiseFit) upper(value, scale float64, at int, unit quantity.Unit) quantity.Measured {
+	chi := quantity.Chi(math.Sqrt(f.variance[at]), 0, f.dof[at], unit, nil)
+	high := chi.Quantile(0.95) * scale
 	u := high / 1.959963984540054 // so that half a normal distribution holds 95 % below high
 	return quantity.Measured{Value: value, U: u, DoF: math.Inf(1), Low: 0, High: high, Unit: unit, Family: quantity.Bound, Upper: true,
 		Budget: []quantity.Line{{Name: "Allan variance at " + quantity.FromSI(f.tauS[at], quantity.MustUnit("s")).String(), U: u, Sensitivity: 1, Contribution: u, DoF: math.Inf(1)}}}

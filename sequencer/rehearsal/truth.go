@@ -134,7 +134,7 @@ func (k knower) sweep(f procedures.FigureElement, windows []virtual.Window) redu
 	for n, i := range f.Recordings {
 		label, _ := k.recordings[i].Labels.Find("rate")
 		w := windows[n]
-		sweep = append(sweep, reduce.SweepPoint{Nominal: p * k.sense * label.Value.SI(), Input: p * w.Input, Output: p * (w.Deterministic - w.Bias)})
+		sweep = append(sweep, reduce.SweepPoint{Nominal: p * k.sense * label.Value.SI(), Input: p * w.Input, Output: p * w.Response()})
 	}
 	return sweep
 }
