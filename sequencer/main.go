@@ -81,7 +81,7 @@ recordings to figures with uncertainty, judges the limits, and seals the result 
 
 // commands is the table of verbs.
 var commands = []func() *cobra.Command{
-	runCommand, checkCommand, reduceCommand, historyCommand, showCommand, virtualCommand, probeCommand,
+	runCommand, checkCommand, reduceCommand, historyCommand, showCommand, virtualCommand, probeCommand, rehearseCommand,
 }
 
 // code says an error once and gives the exit code: what carries none is wrong input.

@@ -17,6 +17,12 @@ func rehearsed(t *testing.T, procedure []byte, benchName, part string, gyros int
 	if !ok {
 		t.Fatalf("no shipped bench %s", benchName)
 	}
+	return rehearsedOn(t, procedure, benchName, text, part, gyros)
+}
+
+// rehearsedOn rehearses on a bench file.
+func rehearsedOn(t *testing.T, procedure []byte, benchName string, text []byte, part string, gyros int) *Report {
+	t.Helper()
 	loaded, _, problems := bench.Load(benchName, text, nil)
 	if len(problems) > 0 {
 		t.Fatal(problems)
@@ -86,6 +92,18 @@ func TestCoverage(t *testing.T) {
 			held(t, rehearsed(t, text, c.bench, c.part, 40))
 		})
 	}
+}
+
+// TestCoverageOfAngles: the shipped optical bench with gyros that send increments of angle.
+func TestCoverageOfAngles(t *testing.T) {
+	t.Parallel()
+	procedure, err := os.ReadFile("../../testdata/procedures/short-angle.yaml")
+	if err != nil {
+		t.Fatal(err)
+	}
+	text, _ := bench.Shipped("virtual-bench")
+	angle := strings.NewReplacer("gyro-frame-optical", "gyro-frame-angle", "population: optical", "population: optical-angle").Replace(string(text))
+	held(t, rehearsedOn(t, procedure, "angle.yaml", []byte(angle), "OG-250", 40))
 }
 
 // TestCoverageOfShipped takes some minutes: PROOFRATE_SOAK=1.

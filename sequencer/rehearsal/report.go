@@ -2,6 +2,7 @@ package rehearsal
 
 import (
 	"context"
+	"encoding/json"
 	"errors"
 	"fmt"
 	"io"
@@ -28,18 +29,29 @@ type Report struct {
 
 // FigureReport compares one figure element with the truth over all trials.
 type FigureReport struct {
-	Name      string  `json:"name"`
-	Place     string  `json:"labels"`
-	Unit      string  `json:"unit"`
-	Measured  int     `json:"measured"` // trials in which it was not void
-	Void      int     `json:"void"`
-	MeanError float64 `json:"mean_error"` // measured less true
-	SDError   float64 `json:"sd_error"`
-	MeanU     float64 `json:"mean_u"`
-	Ratio     float64 `json:"u_over_sd"` // NaN where the error does not scatter
-	Covered   int     `json:"covered"`   // stated 95 % intervals that hold the truth
-	Beyond    int     `json:"beyond"`    // errors beyond the element's own 1 - 1e-6 interval
-	Bounds    int     `json:"bounds"`    // trials in which it was a one-sided bound
+	Name      string `json:"name"`
+	Place     string `json:"labels"`
+	Unit      string `json:"unit"`
+	Measured  int    `json:"measured"` // trials in which it was not void
+	Void      int    `json:"void"`
+	MeanError number `json:"mean_error"` // measured less true
+	SDError   number `json:"sd_error"`
+	MeanU     number `json:"mean_u"`
+	Ratio     number `json:"u_over_sd"` // NaN where the error does not scatter
+	Covered   int    `json:"covered"`   // stated 95 % intervals that hold the truth
+	Beyond    int    `json:"beyond"`    // errors beyond the element's own 1 - 1e-6 interval
+	Bounds    int    `json:"bounds"`    // trials in which it was a one-sided bound
+}
+
+// number is one that may not exist: NaN here, null in JSON.
+type number float64
+
+// MarshalJSON writes null for NaN.
+func (n number) MarshalJSON() ([]byte, error) {
+	if math.IsNaN(float64(n)) {
+		return []byte("null"), nil
+	}
+	return json.Marshal(float64(n))
 }
 
 // LimitReport counts the verdicts of one clause.
@@ -170,20 +182,22 @@ func (t *tally) report() FigureReport {
 	f := t.FigureReport
 	n := float64(len(t.errors))
 	if n == 0 {
-		f.MeanError, f.SDError, f.MeanU, f.Ratio = math.NaN(), math.NaN(), math.NaN(), math.NaN()
+		none := number(math.NaN())
+		f.MeanError, f.SDError, f.MeanU, f.Ratio = none, none, none, none
 		return f
 	}
+	var mean, square, u float64
 	for i := range t.errors {
-		f.MeanError += t.errors[i] / n
-		f.MeanU += t.us[i] / n
+		mean += t.errors[i] / n
+		u += t.us[i] / n
 	}
 	for _, e := range t.errors {
-		f.SDError += (e - f.MeanError) * (e - f.MeanError)
+		square += (e - mean) * (e - mean)
 	}
-	f.SDError = math.Sqrt(f.SDError / math.Max(n-1, 1))
-	f.Ratio = f.MeanU / f.SDError
-	if f.SDError == 0 {
-		f.Ratio = math.NaN()
+	sd := math.Sqrt(square / math.Max(n-1, 1))
+	f.MeanError, f.SDError, f.MeanU, f.Ratio = number(mean), number(sd), number(u), number(math.NaN())
+	if sd > 0 {
+		f.Ratio = number(u / sd)
 	}
 	return f
 }
@@ -201,8 +215,8 @@ func (r *Report) Write(w io.Writer) error {
 	table := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
 	fmt.Fprintln(table, "figure\tat\tunit\tmean error\tsd of error\tmean u\tu/sd\t95 % held\tvoid\tbound")
 	for _, f := range r.Figures {
-		fmt.Fprintf(table, "%s\t%s\t%s\t%s\t%s\t%s\t%s\t%d of %d\t%d\t%d\n", f.Name, f.Place, f.Unit, quantity.Format(f.MeanError, f.SDError/3),
-			quantity.Format(f.SDError, f.SDError), quantity.Format(f.MeanU, f.MeanU), ratioText(f.Ratio), f.Covered, f.Measured, f.Void, f.Bounds)
+		fmt.Fprintf(table, "%s\t%s\t%s\t%s\t%s\t%s\t%s\t%d of %d\t%d\t%d\n", f.Name, f.Place, f.Unit, shown(f.MeanError, f.SDError/3),
+			shown(f.SDError, f.SDError), shown(f.MeanU, f.MeanU), ratioText(float64(f.Ratio)), f.Covered, f.Measured, f.Void, f.Bounds)
 	}
 	fmt.Fprintln(table, "\nclause\taccept\tundecided\tvoid\treject")
 	for _, l := range r.Limits {
@@ -216,6 +230,8 @@ func (r *Report) Write(w io.Writer) error {
 	}
 	return nil
 }
+
+func shown(x, u number) string { return quantity.Format(float64(x), float64(u)) }
 
 func ratioText(x float64) string {
 	if math.IsNaN(x) {
