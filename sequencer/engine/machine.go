@@ -21,9 +21,8 @@ type machine interface {
 // plain is what a machine without needs of its own embeds.
 type plain struct{}
 
-func (plain) start(context.Context) error { return nil }
-func (plain) stop()                       {}
-func (plain) due() time.Time              { return time.Time{} }
+func (plain) stop()          {}
+func (plain) due() time.Time { return time.Time{} }
 
 // machine makes the machine of a step.
 func (e *Engine) machine(s procedures.Step) machine {
