@@ -153,7 +153,7 @@ func (p *Plan) evaluator(recs []*recording.Recording, d *instruments.Description
 
 // benchFor gives the part of a bench's description that one slot's figures depend on.
 func benchFor(d *instruments.Description, slot instruments.SlotID) reduce.Bench {
-	b := reduce.Bench{Latitude: d.Site.Latitude.SI(), Sense: 1, AxisUp: 1}
+	b := reduce.Bench{Latitude: d.Site.Latitude.SI(), Sense: 1, AxisUp: 1, Slot: string(slot)}
 	for _, s := range d.Slots {
 		if s.ID == slot {
 			b.Sense, b.Radius = s.Sense, s.Radius.SI()

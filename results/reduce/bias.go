@@ -13,7 +13,8 @@ import (
 //
 // P the polarity, S/S_nom from the scale-factor figure or 1, creep from the positions read at both ends. Budget: white
 // noise of the same recording; the direction of the table's axis (shared by all gyros) and the attitude of the gyro to
-// it, each times the Earth's rate across the axis; creep; scale factor.
+// it (shared by its figures, and turning with the table), each times the Earth's rate across the axis; creep; scale
+// factor.
 // Source: IEEE Std 952-1997, 12.8 (bias at rest); IEEE Std 528 for the term.
 func bias(_ context.Context, in Input) quantity.Measured {
 	s, reason := signalOf(in.Recordings[0], in.Gyro.Output)
@@ -37,11 +38,28 @@ func bias(_ context.Context, in Input) quantity.Measured {
 	budget := []quantity.Line{
 		{Name: "white noise", U: white, Sensitivity: 1, Contribution: white, DoF: whiteDoF(len(s.counts), 1)},
 		{Name: "axis of the table", Instrument: in.Bench.Instrument + " axis", U: in.Bench.AxisU, Sensitivity: across, Contribution: across * in.Bench.AxisU, DoF: math.Inf(1)},
-		{Name: "attitude in the slot", U: in.Bench.AttitudeU, Sensitivity: across, Contribution: across * in.Bench.AttitudeU, DoF: math.Inf(1)},
 		{Name: "creep of the table", U: creepU, Sensitivity: scale, Contribution: scale * creepU, DoF: math.Inf(1)},
 		{Name: "scale factor", Value: scale, U: scaleU, Sensitivity: -(along + creep), Contribution: math.Abs(along+creep) * scaleU, DoF: math.Inf(1)},
 	}
-	return quantity.T(value, radPerS, present(budget))
+	return quantity.T(value, radPerS, present(append(budget, attitude(in, across)...)))
+}
+
+// attitude is the part of the gyro's attitude to the table's axis: a tilt that is fixed to the table, so that the rate
+// it lets in goes with the cosine and the sine of the table's angle. Rests at one angle share it, rests a quarter turn
+// apart do not. Without a reading of the angle it is a part of its own.
+func attitude(in Input, across float64) []quantity.Line {
+	line := func(name, instrument string, sensitivity float64) quantity.Line {
+		return quantity.Line{Name: name, Instrument: instrument, U: in.Bench.AttitudeU, Sensitivity: sensitivity,
+			Contribution: math.Abs(sensitivity) * in.Bench.AttitudeU, DoF: math.Inf(1)}
+	}
+	_, angles := readings(in.Recordings[0], "table.position")
+	if len(angles) == 0 || in.Bench.Slot == "" {
+		return []quantity.Line{line("attitude in the slot", "", across)}
+	}
+	mean, _ := meanAndScatter(angles)
+	sine, cosine := math.Sincos(mean * degree)
+	shared := "slot " + in.Bench.Slot + " attitude "
+	return []quantity.Line{line("attitude in the slot, one way", shared+"1", across*cosine), line("attitude in the slot, other way", shared+"2", across*sine)}
 }
 
 // creepMost is how fast a table at position hold may creep before the recording is no rest: 1 deg/h (our convention;

@@ -21,6 +21,7 @@ type Bench struct {
 	Creep      float64 // rad/s: half-width of possible creep at position hold
 	TableRate  Calibration
 	Instrument string // the table's name, which its lines in a budget share
+	Slot       string // the gyro's place, whose attitude its figures share
 }
 
 // Calibration is a certificate's entry as the budget uses it; relative numbers.
