@@ -18,7 +18,7 @@ var catalogue = []Method{
 		Doc: "lowest point of the fitted Allan curve, over 0.664"},
 	{Name: "angle-random-walk", Unit: walk, Source: annexC, Reduce: coefficient(termN, walk),
 		Doc: "N: white noise of the rate, fitted to the Allan curve"},
-	{Name: "rate-random-walk", Unit: rateWalk, Source: annexC, Reduce: coefficient(termK, rateWalk),
+	{Name: "rate-random-walk", Unit: rateWalk, Source: annexC, Reduce: rateRandomWalk,
 		Doc: "K: random walk of the rate, fitted to the Allan curve; an upper bound if not detected"},
 	{Name: "quantisation-noise", Unit: radian, Output: "angle", Source: annexC, Reduce: coefficient(termQ, radian),
 		Doc: "Q: quantisation of increments of angle, fitted to the Allan curve; an upper bound if not detected"},
