@@ -10,7 +10,6 @@ import (
 	"github.com/spf13/cobra"
 
 	"proofrate/limits/quantity"
-	"proofrate/limits/source"
 	"proofrate/results/recording"
 	"proofrate/results/reduce"
 )
@@ -137,7 +136,7 @@ func looseFigures(names []string, unit quantity.Unit) ([]reduce.Method, error) {
 	for _, name := range asked {
 		m, ok := reduce.Find(name)
 		if !ok || !slices.Contains(looseNames, name) {
-			return nil, fmt.Errorf("--figure %s: one recording at rest does not give it; %s (figures that it gives: %s)", name, source.DidYouMean(name, looseNames), strings.Join(looseNames, ", "))
+			return nil, fmt.Errorf("--figure %s: one recording at rest does not give it; it gives %s", name, strings.Join(looseNames, ", "))
 		}
 		list = append(list, m)
 	}

@@ -138,6 +138,9 @@ const caution = `CAUTION: this bench will move, heat and cool.
   Only trained people run the bench. Local codes and the makers' instructions come first.
 `
 
+// endings say how a run ended that was not completed.
+var endings = map[string]string{engine.Stopped: "the run was stopped", engine.BenchFailed: "the bench failed"}
+
 // verdictOf gives the outcome its exit code.
 func verdictOf(o engine.Outcome, failure error) error {
 	switch {
@@ -146,7 +149,7 @@ func verdictOf(o engine.Outcome, failure error) error {
 			"isolate the supplies by hand, and do not open the chamber", strings.ToUpper(strings.Join(o.Unsafe, "\n  "))))}
 	case failure != nil, o.Ended != engine.Completed:
 		if failure == nil {
-			failure = fmt.Errorf("run %s: %s; the bench was made safe", o.Ended, o.Reason)
+			failure = fmt.Errorf("%s: %s; the bench was made safe", endings[o.Ended], o.Reason)
 		}
 		return exit{exitStopped, failure}
 	}

@@ -187,7 +187,7 @@ func parseDecimal(text string) (decimal, error) {
 	whole, fraction, _ := strings.Cut(body, ".")
 	digits := whole + fraction
 	exponent -= len(fraction)
-	for strings.HasSuffix(digits, "0") && len(digits) > 1 {
+	for strings.HasSuffix(digits, "0") && len(strings.TrimLeft(digits, "+-")) > 1 {
 		digits, exponent = digits[:len(digits)-1], exponent+1
 	}
 	if over := len(strings.TrimLeft(digits, "+-0")) - mantissaDigits; over > 0 {

@@ -185,7 +185,7 @@ func (e *Engine) ending(ctx context.Context, failure error) (ended, reason strin
 	case failure == nil:
 		return Completed, ""
 	case ctx.Err() != nil:
-		return Stopped, "stopped by the operator: " + context.Cause(ctx).Error()
+		return Stopped, context.Cause(ctx).Error()
 	default:
 		return BenchFailed, failure.Error()
 	}
