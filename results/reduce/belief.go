@@ -28,8 +28,8 @@ type cell struct {
 }
 
 const (
-	beliefCoarse = 20
-	beliefFine   = 32
+	beliefCoarse = 16
+	beliefFine   = 24
 	// beliefLeast: a row or column of the coarse grid with less than this of the greatest weight is left out.
 	beliefLeast = 1e-9
 	// beliefStride: every third point of the grid of averaging times, the last one among them; neighbours correlate so
@@ -272,13 +272,3 @@ func (b belief) draws(seed uint64, count int) []coefficients {
 }
 
 const beliefStream = 0x62656c696566 // "belief"
-
-// mean of the squared coefficients.
-func (b belief) mean() (c coefficients) {
-	for _, one := range b.cells {
-		for t := range c {
-			c[t] += one.weight * one.model[t]
-		}
-	}
-	return c
-}

@@ -29,7 +29,7 @@ func newLaw(n int, ms []int, tau0S float64) *law {
 	}
 	points := len(ms)
 	l.shape = make([][pairCount]float64, points*points)
-	const perDecade = 40
+	const perDecade = 24
 	low, high := 0.02/l.tauS[points-1], 0.5/tau0S
 	steps := int(math.Ceil(math.Log10(high/low) * perDecade))
 	width := math.Log(high/low) / float64(steps)

@@ -71,12 +71,12 @@ func StabilityTaus(samples int, intervalS float64) []float64 {
 
 // fitNoise fits Q, N, B and K to a recording at rest by non-negative least squares over the whole curve. Each point is
 // weighted by the inverse of its variance under the model; the weights are found in three rounds. Void with a reason.
-func fitNoise(s signal, output string) (*noiseFit, string) {
+func fitNoise(s signal) (*noiseFit, string) {
 	n := len(s.counts)
 	if n < fitSamplesLeast {
 		return nil, "the recording is too short for an Allan curve: at least 50 samples are needed"
 	}
-	f := &noiseFit{allowed: [terms]bool{termQ: output == "angle", termN: true, termB: true, termK: true}}
+	f := &noiseFit{allowed: [terms]bool{termQ: s.angle, termN: true, termB: true, termK: true}}
 	ms := averaging(n/tauParts, tauPerDecade)
 	theta := prefix(s.counts)
 	for _, m := range ms {

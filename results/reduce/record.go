@@ -15,6 +15,7 @@ const earthRate = 7.292115e-5
 type signal struct {
 	counts  []int64
 	count   float64 // rad/s a count: of an angle increment, its angle over the sample interval
+	angle   bool    // counts are increments of angle
 	tau0S   float64
 	startS  float64
 	seconds float64
@@ -35,6 +36,7 @@ func signalOf(r *recording.Recording, output string) (signal, string) {
 		}
 		s := signal{counts: r.Counts[c], count: channel.Count.SI(), tau0S: r.SampleInterval, startS: r.Start, seconds: r.Duration()}
 		if output == "angle" {
+			s.angle = true
 			s.count /= r.SampleInterval
 		}
 		if len(s.counts) < samplesLeast {
@@ -76,107 +78,32 @@ func (s signal) mean() float64 {
 	return sum / float64(len(s.counts)) * s.count
 }
 
-// whiteS is N^2 in rad^2/s, from the shortest averaging time at which quantisation of an angle does not count:
+// white is the white noise of a recording, as its own samples show it: N^2 in rad^2/s, with its degrees of freedom.
 //
-//	N^2 = sigma_A^2(tau) tau,  tau = tau0 for rates, 1 s for increments of angle
+//	N^2 = sigma_A^2(tau) tau,  tau = tau0 for rates, 1 s for increments of angle, whose quantisation is gone by then
 //
-// Flicker's share at such times is below a thousandth for every gyro that is worth a test.
-func (s signal) whiteS(output string) float64 {
+// For rates that is N_eff: rounding adds count^2 tau0/12. Flicker's share at such times, (0.664 B)^2 tau, is below a
+// hundredth of N^2 for every gyro whose white noise reaches beyond 100 s.
+func (s signal) white() (square, dof float64) {
 	m := 1
-	if output == "angle" {
+	if s.angle {
 		m = max(1, min(len(s.counts)/8, int(math.Round(1/s.tau0S))))
 	}
-	variance, _ := allanVariance(prefix(s.counts), m)
-	return variance * s.count * s.count * float64(m) * s.tau0S
+	return allanVarianceSparse(prefix(s.counts), m) * s.count * s.count * float64(m) * s.tau0S, whiteDoF(len(s.counts), m)
 }
 
-// readings are the values of a bench reading during a recording.
-func readings(r *recording.Recording, name string) (at, values []float64) {
-	series, ok := r.Series(name)
-	if !ok {
-		return nil, nil
-	}
-	end := r.Start + r.Duration()
-	for i, t := range series.At {
-		if t >= r.Start && t <= end {
-			at, values = append(at, t), append(values, series.Values[i])
-		}
-	}
-	return at, values
-}
-
-const degree = math.Pi / 180
-
-// input is the mean rate of the table during a recording, about its own axis, in rad/s, with the standard uncertainty
-// of reading it.
+// rounding is the standard uncertainty of the mean from counts being whole.
 //
-// At rest (below restRate) it is the angle between the first and the last reading of the position over the time between
-// them; else the mean of the readings of the rate, whose scatter over the root of their number, ripple of the table
-// included, is the uncertainty, and at least that of their resolution. Never the command.
-func input(r *recording.Recording) (rate, u float64, reason string) {
-	_, values := readings(r, "table.rate")
-	if len(values) < 2 {
-		return 0, 0, fmt.Sprintf("recording %s has %d readings of table.rate; at least two are needed", named(r), len(values))
+// Increments of angle carry their remainder: only those at both ends remain, count/sqrt(6) over the time. Rates are
+// rounded each by itself: noise of a standard deviation s well above a count makes that random, and part of the white
+// noise; what it leaves of the offset dies away as exp(-2 pi^2 (s/count)^2), and without noise it is count/sqrt(12), a
+// dead band. Source: the first term of the Fourier series of the rounding error of a normal variable.
+func (s signal) rounding(white float64) float64 {
+	if s.angle {
+		return s.count * s.tau0S / math.Sqrt(6) / s.seconds
 	}
-	mean, scatter := meanAndScatter(values)
-	if math.Abs(mean) >= restRate {
-		return mean * degree, math.Max(scatter, resolution(values)) / math.Sqrt(float64(len(values))) * degree, ""
-	}
-	if creep, u, ok := creepOf(r); ok {
-		return creep, u, ""
-	}
-	return 0, math.Abs(mean)*degree + scatter/math.Sqrt(float64(len(values)))*degree, ""
-}
-
-// restRate tells rest from turning, in deg/s, at the table's own reading.
-const restRate = 0.01
-
-// creepOf is the rate at position hold from the positions read at both ends.
-func creepOf(r *recording.Recording) (rate, u float64, ok bool) {
-	at, position := readings(r, "table.position")
-	n := len(at)
-	if n < 2 || at[n-1] <= at[0] {
-		return 0, 0, false
-	}
-	span := at[n-1] - at[0]
-	// Two rounded readings, each uniform over one step of the scale.
-	return (position[n-1] - position[0]) / span * degree, math.Sqrt2 * step(position) / math.Sqrt(12) / span * degree, true
-}
-
-// step is the smallest difference between readings that differ: the resolution of their scale, at most.
-func step(values []float64) float64 {
-	least := math.Inf(1)
-	for i := 1; i < len(values); i++ {
-		if d := math.Abs(values[i] - values[i-1]); d > 1e-9 {
-			least = math.Min(least, d)
-		}
-	}
-	if math.IsInf(least, 1) {
-		return 1e-5 // deg: a reading that never changed; the finest scale of common encoders
-	}
-	return least
-}
-
-func resolution(values []float64) float64 {
-	if d := step(values); d < math.Inf(1) && len(values) > 2 {
-		return d / math.Sqrt(12)
-	}
-	return 0
-}
-
-// meanAndScatter are the mean and the sample standard deviation.
-func meanAndScatter(values []float64) (mean, scatter float64) {
-	for _, v := range values {
-		mean += v
-	}
-	mean /= float64(len(values))
-	if len(values) < 2 {
-		return mean, 0
-	}
-	for _, v := range values {
-		scatter += (v - mean) * (v - mean)
-	}
-	return mean, math.Sqrt(scatter / float64(len(values)-1))
+	ratio := white / s.tau0S / (s.count * s.count)
+	return s.count / math.Sqrt(12) * math.Exp(-2*math.Pi*math.Pi*math.Max(ratio-1.0/12, 0))
 }
 
 // earth is the Earth's rate on the gyro's input axis, and the part across it, both in rad/s.

@@ -36,6 +36,7 @@ type kind struct {
 	cubic, even, hysteresis    float64 // of full scale
 	scaleSpread, biasSpread    float64
 	shareU, axisU, attitudeU   float64
+	tau0                       float64 // s, the sample interval
 	resting, dwelling, turning float64 // s: a rest, a point of a sweep, a turn-on
 }
 
@@ -43,19 +44,18 @@ const (
 	perHour     = degree / 3600      // rad/s in 1 deg/h
 	perRootHour = degree / 60        // rad/sqrt(s) in 1 deg/sqrt(h)
 	walkPerHour = degree / 3600 / 60 // rad/s/sqrt(s) in 1 deg/h/sqrt(h)
-	tau0        = 0.01               // s
 )
 
 // kinds: gyros of navigation, industrial and tactical grade, and one that sends angles.
 var kinds = []kind{
 	{name: "optical", n: 0.002 * perRootHour, b: 0.02 * perHour, k: 0.002 * walkPerHour, count: 0.05 * perHour, fullScale: 250 * degree, turnOn: 0.03 * perHour,
-		cubic: 40e-6, scaleSpread: 80e-6, biasSpread: 0.35 * perHour, shareU: 11e-6, axisU: 0.2e-3, attitudeU: 0.5e-3, resting: 600, dwelling: 20, turning: 60},
+		cubic: 40e-6, scaleSpread: 80e-6, biasSpread: 0.35 * perHour, shareU: 11e-6, axisU: 0.2e-3, attitudeU: 0.5e-3, tau0: 0.01, resting: 600, dwelling: 10, turning: 60},
 	{name: "vibratory", n: 0.2 * perRootHour, b: 3 * perHour, k: 0.5 * walkPerHour, count: 0.001 * degree, fullScale: 400 * degree, turnOn: 6 * perHour,
-		cubic: 150e-6, even: 20e-6, scaleSpread: 500e-6, biasSpread: 40 * perHour, shareU: 11e-6, axisU: 0.2e-3, attitudeU: 0.5e-3, resting: 600, dwelling: 20, turning: 60},
+		cubic: 150e-6, even: 20e-6, scaleSpread: 500e-6, biasSpread: 40 * perHour, shareU: 11e-6, axisU: 0.2e-3, attitudeU: 0.5e-3, tau0: 0.01, resting: 600, dwelling: 10, turning: 60},
 	{name: "spinning-mass", n: 0.02 * perRootHour, b: 0.3 * perHour, k: 0.05 * walkPerHour, count: 0.0005 * degree, fullScale: 60 * degree, turnOn: 1.2 * perHour,
-		even: 15e-6, hysteresis: 40e-6, scaleSpread: 220e-6, biasSpread: 8 * perHour, shareU: 11e-6, axisU: 0.2e-3, attitudeU: 0.5e-3, resting: 600, dwelling: 20, turning: 60},
+		even: 15e-6, hysteresis: 40e-6, scaleSpread: 220e-6, biasSpread: 8 * perHour, shareU: 11e-6, axisU: 0.2e-3, attitudeU: 0.5e-3, tau0: 0.01, resting: 600, dwelling: 10, turning: 60},
 	{name: "angle", n: 0.002 * perRootHour, b: 0.02 * perHour, k: 0.002 * walkPerHour, count: 0.02 / 3600 * degree, angle: true, fullScale: 250 * degree, turnOn: 0.03 * perHour,
-		cubic: 40e-6, scaleSpread: 80e-6, biasSpread: 0.35 * perHour, shareU: 11e-6, axisU: 0.2e-3, attitudeU: 0.5e-3, resting: 600, dwelling: 20, turning: 60},
+		cubic: 40e-6, scaleSpread: 80e-6, biasSpread: 0.35 * perHour, shareU: 11e-6, axisU: 0.2e-3, attitudeU: 0.5e-3, tau0: 0.01, resting: 600, dwelling: 10, turning: 60},
 }
 
 // stage is one Markov process, stepped exactly every so many samples and straight between.
@@ -71,7 +71,7 @@ func newWorld(k kind, seed uint64) *world {
 	w := &world{kind: k, random: rand.New(rand.NewPCG(seed, 77))}
 	sigma := k.b * math.Sqrt(math.Ln10/math.Pi)
 	for _, t := range simTimesS {
-		s := stage{timeS: t, sigma: sigma, every: max(1, int(t/50/tau0))}
+		s := stage{timeS: t, sigma: sigma, every: max(1, int(t/50/k.tau0))}
 		s.x = sigma * w.random.NormFloat64()
 		w.stages = append(w.stages, s)
 	}
@@ -126,12 +126,12 @@ var cubicShape = 1 / (0.5*(0.0016+0.0625+1)/(0.04+0.25+1) - 0.125)
 
 // record makes a recording at a table rate (by its own reading).
 func (w *world) record(name string, seconds, rate, up float64, labels ...recording.Label) (*recording.Recording, truth) {
-	samples := int(math.Round(seconds / tau0))
+	samples := int(math.Round(seconds / w.tau0))
 	unit, channel := quantity.MustUnit("rad/s"), "rate"
 	if w.angle {
 		unit, channel = quantity.MustUnit("rad"), "angle"
 	}
-	r := &recording.Recording{Section: recording.Section{Name: name, Labels: labels, Start: w.nowS, SampleInterval: tau0,
+	r := &recording.Recording{Section: recording.Section{Name: name, Labels: labels, Start: w.nowS, SampleInterval: w.tau0,
 		Channels: []recording.Channel{{Name: channel, Count: quantity.Of(w.count, unit)}}}, Quality: recording.Quality{Complete: true}}
 	trueRate := rate * (1 + w.share)
 	r.Readings = []recording.Series{{Name: "table.rate", Unit: quantity.MustUnit("deg/s")}, {Name: "table.position", Unit: quantity.MustUnit("deg")}}
@@ -143,7 +143,7 @@ func (w *world) record(name string, seconds, rate, up float64, labels ...recordi
 	}
 	fixed := w.response(trueRate+w.earth, up) + w.bias + w.onBias
 	counts := make([]int64, samples)
-	white := w.n / math.Sqrt(tau0)
+	white := w.n / math.Sqrt(w.tau0)
 	sum := 0.0
 	for i := range w.stages {
 		w.stages[i].to = w.stages[i].x
@@ -154,7 +154,7 @@ func (w *world) record(name string, seconds, rate, up float64, labels ...recordi
 			s := &w.stages[j]
 			if i%s.every == 0 {
 				level[j] = s.x
-				s.step(float64(s.every)*tau0, w.random)
+				s.step(float64(s.every)*w.tau0, w.random)
 				slope[j] = (s.x - level[j]) / float64(s.every)
 			}
 		}
@@ -163,11 +163,11 @@ func (w *world) record(name string, seconds, rate, up float64, labels ...recordi
 			slow += level[j]
 			level[j] += slope[j]
 		}
-		w.walk += w.k * math.Sqrt(tau0) * w.random.NormFloat64()
+		w.walk += w.k * math.Sqrt(w.tau0) * w.random.NormFloat64()
 		sum += slow
 		v := fixed + slow + white*w.random.NormFloat64()
 		if w.angle {
-			w.carried += v * tau0 / w.count
+			w.carried += v * w.tau0 / w.count
 			whole := math.RoundToEven(w.carried)
 			w.carried -= whole
 			counts[i] = int64(whole)
@@ -205,7 +205,7 @@ func (k kind) white2() float64 {
 	if k.angle {
 		return k.n * k.n
 	}
-	return k.n*k.n + k.count*k.count*tau0/12
+	return k.n*k.n + k.count*k.count*k.tau0/12
 }
 
 // coverage counts how a figure's claims stand up. The claims are those of the whole project: of 40 stated 95 %

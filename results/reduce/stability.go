@@ -68,7 +68,7 @@ func fitOf(in Input) (*noiseFit, string) {
 	if reason != "" {
 		return nil, reason
 	}
-	return fitNoise(s, in.Gyro.Output)
+	return fitNoise(s)
 }
 
 // ratioDistribution is the distribution of a positive quantity read off the fit: if the fit makes r times the truth of
@@ -154,7 +154,7 @@ func allanDeviation(_ context.Context, in Input) quantity.Measured {
 	if m < 1 || 3*m > len(s.counts) {
 		return quantity.Voided(radPerS, "the averaging time is below the sample interval or beyond a third of the recording")
 	}
-	f, reason := fitNoise(s, in.Gyro.Output)
+	f, reason := fitNoise(s)
 	if f == nil {
 		return quantity.Voided(radPerS, reason)
 	}

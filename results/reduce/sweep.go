@@ -2,168 +2,51 @@ package reduce
 
 import (
 	"math"
+	"math/rand/v2"
 	"slices"
+
+	"gonum.org/v1/gonum/mat"
 
 	"proofrate/limits/quantity"
 )
 
-// SweepPoint is one rate of a sweep: mean input and mean output over one recording.
-type SweepPoint struct {
-	Nominal float64 // rad/s: the rate that the procedure names
-	Input   float64 // rad/s about the input axis, Earth's rate and polarity in it
-	Output  float64 // rad/s at the nominal scale factor
-}
-
-// Sweep is a set of points in the order in which they were measured.
-type Sweep []SweepPoint
-
-// Line is y = Slope x + Offset.
-type Line struct{ Slope, Offset float64 }
-
-// Line is the unweighted least-squares line through all points.
-//
-//	S = sum (x-xm)(y-ym) / sum (x-xm)^2,   c = ym - S xm
-//
-// Source: IEEE Std 952-1997, 12.7 (scale factor); the normal equations about the means, as for the StRD sets.
-func (s Sweep) Line() Line {
-	var xm, ym float64
-	for _, p := range s {
-		xm += p.Input
-		ym += p.Output
-	}
-	n := float64(len(s))
-	xm, ym = xm/n, ym/n
-	var sxx, sxy float64
-	for _, p := range s {
-		sxx += (p.Input - xm) * (p.Input - xm)
-		sxy += (p.Input - xm) * (p.Output - ym)
-	}
-	slope := sxy / sxx
-	return Line{slope, ym - slope*xm}
-}
-
-// Error is S - 1: the scale factor relative to the nominal one.
-func (s Sweep) Error() float64 { return s.Line().Slope - 1 }
-
-// Nonlinearity is max |y - S x - c| over S times full scale, or over |S x| for rates from least up.
-// Source: IEEE Std 952-1997, 12.7.4.
-func (s Sweep) Nonlinearity(fullScale float64, ofReading bool, least float64) float64 {
-	line, most := s.Line(), 0.0
-	for _, p := range s {
-		part := fullScale
-		if ofReading {
-			if part = math.Abs(p.Input); part < least || part == 0 {
-				continue
-			}
-		}
-		most = math.Max(most, math.Abs(p.Output-line.Slope*p.Input-line.Offset)/(math.Abs(line.Slope)*part))
-	}
-	return most
-}
-
-// Asymmetry is (S+ - S-)/S, the slopes of the points at positive and at negative rates, those at rest in both.
-// Source: IEEE Std 952-1997, 12.7.5.
-func (s Sweep) Asymmetry() float64 {
-	var positive, negative Sweep
-	for _, p := range s {
-		if p.Nominal >= 0 {
-			positive = append(positive, p)
-		}
-		if p.Nominal <= 0 {
-			negative = append(negative, p)
-		}
-	}
-	return (positive.Line().Slope - negative.Line().Slope) / s.Line().Slope
-}
-
-// pair is the same nominal rate come to from below and from above, each the indices of its points.
-type pair struct{ up, down []int }
-
-// pairs finds the rates of a full traverse that were come to from both sides. The first leg, up to the first turn,
-// conditions the gyro and does not count; nor does a turning point, which has no side.
-func (s Sweep) pairs() []pair {
-	turned := false
-	byRate := map[float64]*pair{}
-	var order []float64
-	for i := 1; i+1 < len(s); i++ {
-		before, after := s[i].Nominal-s[i-1].Nominal, s[i+1].Nominal-s[i].Nominal
-		if before*after < 0 {
-			turned = true
-			continue
-		}
-		if !turned || before == 0 {
-			continue
-		}
-		p := byRate[s[i].Nominal]
-		if p == nil {
-			p = &pair{}
-			byRate[s[i].Nominal] = p
-			order = append(order, s[i].Nominal)
-		}
-		if before > 0 {
-			p.up = append(p.up, i)
-		} else {
-			p.down = append(p.down, i)
-		}
-	}
-	slices.Sort(order)
-	var list []pair
-	for _, rate := range order {
-		if p := byRate[rate]; len(p.up) > 0 && len(p.down) > 0 {
-			list = append(list, *p)
-		}
-	}
-	return list
-}
-
-// gaps are, for each pair, the difference of its mean residuals from the line, upward less downward.
-func (s Sweep) gaps() []float64 {
-	line := s.Line()
-	mean := func(points []int) float64 {
-		sum := 0.0
-		for _, i := range points {
-			sum += s[i].Output - line.Slope*s[i].Input - line.Offset
-		}
-		return sum / float64(len(points))
-	}
-	var list []float64
-	for _, p := range s.pairs() {
-		list = append(list, mean(p.up)-mean(p.down))
-	}
-	return list
-}
-
-// Hysteresis is max |y_up - y_down| over S times full scale, over equal nominal rates of the full traverse; NaN if
-// there is no rate that was come to from both sides. Source: IEEE Std 528 for the term.
-func (s Sweep) Hysteresis(fullScale float64) float64 {
-	most := math.NaN()
-	for _, g := range s.gaps() {
-		if !(math.Abs(g) <= most) {
-			most = math.Abs(g)
-		}
-	}
-	return most / (math.Abs(s.Line().Slope) * fullScale)
-}
-
 // measuredSweep is a sweep with what its points' outputs scatter by.
 type measuredSweep struct {
 	Sweep
-	windows []window
-	white   []float64 // variance of each output from white noise, (rad/s)^2
-	reading []float64 // of each input, from reading the table
-	slow    coefficients
-	bench   Bench
-	gyro    Gyro
-	seed    uint64
+	white         []float64      // standard uncertainty of each output from white noise and rounding, rad/s
+	reading       []float64      // of each input, from reading the table
+	flicker, walk [][]float64    // covariance of the outputs for B = 1 rad/s and for K = 1 rad/s/sqrt(s)
+	fitted        coefficients   // B and K
+	believed      []coefficients // draws of them
+	centripetal   float64        // s: output from the acceleration at the slot's radius is this times the rate squared
+	bench         Bench
+	gyro          Gyro
 }
 
 // window is when a recording was made.
 type window struct{ startS, lengthS float64 }
 
-// sweepOf reduces an element's recordings to a sweep.
+// slowDraws carry what is believed of the slow noise.
+const slowDraws = 500
+
+// sweepOf reduces an element's recordings to a sweep. White and slow noise are taken from a recording at rest: while the
+// table turns, its ripple would be mistaken for the gyro's noise. The Earth's rate is a constant part of every input.
 func sweepOf(in Input) (*measuredSweep, string) {
-	m := &measuredSweep{bench: in.Bench, gyro: in.Gyro, seed: in.Seed}
+	if len(in.Noise) == 0 {
+		return nil, "no recording at rest tells the gyro's noise"
+	}
+	rest, reason := signalOf(in.Noise[0], in.Gyro.Output)
+	if reason != "" {
+		return nil, reason
+	}
+	fit, reason := fitNoise(rest)
+	if fit == nil {
+		return nil, reason
+	}
+	square, _ := rest.white()
+	m := &measuredSweep{bench: in.Bench, gyro: in.Gyro, centripetal: in.Gyro.AccelerationSensitivity * in.Bench.Radius}
 	along, _ := in.Bench.earth()
+	var windows []window
 	for _, r := range in.Recordings {
 		s, reason := signalOf(r, in.Gyro.Output)
 		if reason != "" {
@@ -173,20 +56,16 @@ func sweepOf(in Input) (*measuredSweep, string) {
 		if reason != "" {
 			return nil, reason
 		}
-		x *= 1 + in.Bench.TableRate.Correction
 		label, ok := r.Labels.Find("rate")
 		if !ok {
 			return nil, "recording " + named(r) + " has no label rate"
 		}
 		sense := in.Bench.Sense
 		m.Sweep = append(m.Sweep, SweepPoint{Nominal: in.Gyro.Polarity * sense * label.Value.SI(),
-			Input: in.Gyro.Polarity * (sense*x + along), Output: s.mean()})
-		m.windows = append(m.windows, window{s.startS, s.seconds})
-		m.white = append(m.white, s.seconds) // the length for now
-		m.reading = append(m.reading, u*u)
-	}
-	if reason := m.noise(in); reason != "" {
-		return nil, reason
+			Input: in.Gyro.Polarity * (sense*x*(1+in.Bench.TableRate.Correction) + along), Output: s.mean()})
+		m.white = append(m.white, math.Hypot(math.Sqrt(square/s.seconds), s.rounding(square)))
+		m.reading = append(m.reading, u)
+		windows = append(windows, window{s.startS, s.seconds})
 	}
 	low, high := m.Sweep[0].Input, m.Sweep[0].Input
 	for _, p := range m.Sweep {
@@ -195,67 +74,47 @@ func sweepOf(in Input) (*measuredSweep, string) {
 	if (high-low)/degree < restRate {
 		return nil, "the table did not turn at different rates"
 	}
+	m.flicker = coefficients{termB: 1}.windows(windows)
+	m.walk = coefficients{termK: 1}.windows(windows)
+	m.fitted = fit.got
+	m.believed = fit.believe().draws(in.Seed, slowDraws)
 	return m, ""
 }
 
-// noise takes white and slow noise from a recording at rest: while the table turns, its ripple would be mistaken for
-// the gyro's noise.
-func (m *measuredSweep) noise(in Input) string {
-	if len(in.Noise) == 0 {
-		return "no recording at rest tells the gyro's noise"
-	}
-	s, reason := signalOf(in.Noise[0], in.Gyro.Output)
-	if reason != "" {
-		return reason
-	}
-	fit, reason := fitNoise(s, in.Gyro.Output)
-	if fit == nil {
-		return reason
-	}
-	m.slow = coefficients{termB: fit.got[termB], termK: fit.got[termK]}
-	white := s.whiteS(in.Gyro.Output)
-	for i, length := range m.white {
-		m.white[i] = white / length
-	}
-	return ""
-}
-
-// covariance of the points' outputs, in (rad/s)^2: white noise and reading on the diagonal, slow noise between windows,
-// and the centripetal acceleration at the slot's radius, r w^2, through the declared sensitivity.
-func (m *measuredSweep) covariance() [][]float64 {
-	n := len(m.Sweep)
-	slow := m.slow.windows(m.windows)
-	c := make([][]float64, n)
-	g := m.gyro.AccelerationSensitivity * m.bench.Radius
-	for i := range c {
-		c[i] = make([]float64, n)
-		for j := range c[i] {
-			wi, wj := m.Sweep[i].Input, m.Sweep[j].Input
-			c[i][j] = slow[i][j] + g*g*wi*wi*wj*wj
-		}
-		c[i][i] += m.white[i] + m.reading[i]
-	}
-	return c
-}
-
-// parts is the budget of a linear figure f = sum g_i y_i: each source by its own covariance.
+// parts is the budget of a figure that is linear in the outputs, f = sum g_i y_i: each source by its own covariance.
+//
+// The slow noise's part is that of the fitted B and K, with the degrees of freedom that the spread of what is believed
+// of it stands for, 1/(2 (u(u)/u)^2). Source: JCGM 100:2008, G.4.2.
 func (m *measuredSweep) parts(g []float64) []quantity.Line {
-	slow := m.slow.windows(m.windows)
-	var white, reading, flicker, centripetal float64
+	var white, reading, flicker, walk, centripetal float64
 	for i := range g {
-		white += g[i] * g[i] * m.white[i]
-		reading += g[i] * g[i] * m.reading[i]
+		white += g[i] * g[i] * m.white[i] * m.white[i]
+		reading += g[i] * g[i] * m.reading[i] * m.reading[i]
 		centripetal += g[i] * m.Sweep[i].Input * m.Sweep[i].Input
 		for j := range g {
-			flicker += g[i] * g[j] * slow[i][j]
+			flicker += g[i] * g[j] * m.flicker[i][j]
+			walk += g[i] * g[j] * m.walk[i][j]
 		}
 	}
-	centripetal *= m.gyro.AccelerationSensitivity * m.bench.Radius
-	line := func(name string, u float64) quantity.Line {
-		return quantity.Line{Name: name, U: u, Sensitivity: 1, Contribution: u, DoF: math.Inf(1)}
+	slow, spread := m.slowOf(flicker, walk)
+	line := func(name string, u, dof float64) quantity.Line {
+		return quantity.Line{Name: name, U: u, Sensitivity: 1, Contribution: u, DoF: dof}
 	}
-	return present([]quantity.Line{line("white noise", math.Sqrt(white)), line("reading of the table's rate", math.Sqrt(reading)),
-		line("slow noise", math.Sqrt(math.Max(flicker, 0))), line("centripetal acceleration", math.Abs(centripetal))})
+	return present([]quantity.Line{line("white noise", math.Sqrt(white), math.Inf(1)), line("reading of the table's rate", math.Sqrt(reading), math.Inf(1)),
+		line("slow noise", slow, slow*slow/(2*spread*spread)), line("centripetal acceleration", math.Abs(centripetal*m.centripetal), math.Inf(1))})
+}
+
+// slowOf is the standard uncertainty from slow noise, fitted, of something whose variance is flicker B^2 + walk K^2, and
+// half the width of the middle 68 % of what is believed of it.
+func (m *measuredSweep) slowOf(flicker, walk float64) (u, spread float64) {
+	of := func(c coefficients) float64 { return math.Sqrt(math.Max(c[termB]*flicker+c[termK]*walk, 0)) }
+	believed := make([]float64, len(m.believed))
+	for i, c := range m.believed {
+		believed[i] = of(c)
+	}
+	slices.Sort(believed)
+	n := len(believed)
+	return of(m.fitted), (believed[n*84/100] - believed[n*16/100]) / 2
 }
 
 // gradient of a figure by the outputs, by central differences: the figures are smooth in them.
@@ -270,4 +129,58 @@ func (m *measuredSweep) gradient(figure func(Sweep) float64) []float64 {
 		g[i] = (up - figure(moved)) / (2 * step)
 	}
 	return g
+}
+
+// noiseOf draws what the sources make of residuals that are zero.
+func (m *measuredSweep) noiseOf(residuals func(Sweep) []float64, random *rand.Rand) [][]float64 {
+	b, k := math.Sqrt(m.fitted[termB]), math.Sqrt(m.fitted[termK])
+	n := len(m.Sweep)
+	flicker, walk := factor(m.flicker), factor(m.walk)
+	line := m.Line()
+	straight := slices.Clone(m.Sweep)
+	zB, zK := make([]float64, n), make([]float64, n)
+	list := make([][]float64, largestDraws)
+	for d := range list {
+		centripetal := m.centripetal * random.NormFloat64()
+		for i := range n {
+			zB[i], zK[i] = b*random.NormFloat64(), k*random.NormFloat64()
+		}
+		for i := range n {
+			x := m.Sweep[i].Input
+			e := m.white[i]*random.NormFloat64() + m.reading[i]*random.NormFloat64() + centripetal*x*x
+			for j := range i + 1 {
+				e += flicker[i][j]*zB[j] + walk[i][j]*zK[j]
+			}
+			straight[i].Output = line.Slope*x + line.Offset + e
+		}
+		list[d] = residuals(straight)
+	}
+	return list
+}
+
+// factor is the Cholesky factor of a covariance, with as much on its diagonal as rounding asks for.
+func factor(c [][]float64) [][]float64 {
+	n := len(c)
+	for jitter := 1e-12; ; jitter *= 10 {
+		sym := mat.NewSymDense(n, nil)
+		for i := range n {
+			for j := i; j < n; j++ {
+				sym.SetSym(i, j, c[i][j])
+			}
+			sym.SetSym(i, i, c[i][i]*(1+jitter))
+		}
+		var cholesky mat.Cholesky
+		if !cholesky.Factorize(sym) {
+			continue
+		}
+		var lower mat.TriDense
+		cholesky.LTo(&lower)
+		rows := make([][]float64, n)
+		for i := range rows {
+			for j := range i + 1 {
+				rows[i] = append(rows[i], lower.At(i, j))
+			}
+		}
+		return rows
+	}
 }
