@@ -26,7 +26,7 @@ func TestPortsGiveTheSameFigures(t *testing.T) {
 	env := append(os.Environ(), "XDG_CONFIG_HOME="+filepath.Join(dir, "config"))
 	file := filepath.Join(dir, "ports.yaml")
 	var said bytes.Buffer
-	server := exec.Command(program, "virtual", "--pace", "40", "--seed", "5", "--to", file)
+	server := exec.Command(program, "virtual", "--pace", "25", "--seed", "5", "--to", file)
 	server.Env, server.Stderr = env, &said
 	if err := server.Start(); err != nil {
 		t.Fatal(err)
@@ -34,7 +34,7 @@ func TestPortsGiveTheSameFigures(t *testing.T) {
 	ended := make(chan error, 1)
 	go func() { ended <- server.Wait() }()
 	for i := 0; ; i++ {
-		if text, err := os.ReadFile(file); err == nil && strings.Contains(string(text), "pace: 40") {
+		if text, err := os.ReadFile(file); err == nil && strings.Contains(string(text), "pace: 25") {
 			break
 		}
 		if i == 1000 {

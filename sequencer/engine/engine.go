@@ -209,6 +209,12 @@ func (e *Engine) judge(out *Outcome) error {
 	return errors.Join(failures...)
 }
 
+// patient lengthens a wait for an instrument to a second of the wall at least: on a virtual bench that is offered on
+// ports at a pace, bench time runs on while this computer does something else for a moment.
+func (e *Engine) patient(d time.Duration) time.Duration {
+	return max(d, time.Duration(e.bench.Description.Pace*float64(time.Second)))
+}
+
 // since is bench time: seconds from the start of the run.
 func (e *Engine) since(t time.Time) float64 { return t.Sub(e.began).Seconds() }
 

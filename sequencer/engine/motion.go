@@ -78,7 +78,7 @@ func (t *turn) start(ctx context.Context) error {
 	if err := t.e.needTable("turn"); err != nil {
 		return err
 	}
-	t.limit = t.e.clock.Now().Add(t.e.slew(t.rate) + settleSlack)
+	t.limit = t.e.clock.Now().Add(t.e.slew(t.rate) + t.e.patient(settleSlack))
 	t.e.table = tableState{moving: true}
 	return t.e.bench.Table.SetRate(ctx, t.rate, t.e.acceleration())
 }
@@ -123,7 +123,7 @@ func startHold(ctx context.Context, e *Engine, a *arrival) error {
 	if e.bench.Table == nil {
 		return nil
 	}
-	a.limit = e.clock.Now().Add(e.slew(quantity.Of(0, degPerS)) + settleSlack)
+	a.limit = e.clock.Now().Add(e.slew(quantity.Of(0, degPerS)) + e.patient(settleSlack))
 	e.table = tableState{holds: true}
 	return e.bench.Table.Stop(ctx)
 }
@@ -161,7 +161,7 @@ func (p *position) start(ctx context.Context) error {
 	}
 	// The profile states the travelling rate; a tenth of the table's own is slower than any of them.
 	slow := p.e.bench.Description.Table.MaxRate.As(degPerS) / 10
-	p.limit = p.e.clock.Now().Add(time.Duration(travel/slow*float64(time.Second)) + settleSlack)
+	p.limit = p.e.clock.Now().Add(time.Duration(travel/slow*float64(time.Second)) + p.e.patient(settleSlack))
 	p.e.table = tableState{moving: true}
 	return instruments.GoTo(ctx, p.e.bench.Table, p.angle)
 }

@@ -216,8 +216,8 @@ func (r *record) listen(ctx context.Context, t *tap) {
 	if t.slot.last.After(heard) {
 		heard = t.slot.last
 	}
-	if r.e.clock.Now().Sub(heard) > silence {
-		r.e.endTrial(ctx, t.slot, fmt.Sprintf("the gyro has sent no valid sample for %s during the recording %q", spoken(silence), r.ask.Name))
+	if r.e.clock.Now().Sub(heard) > r.e.patient(silence) {
+		r.e.endTrial(ctx, t.slot, fmt.Sprintf("the gyro has sent no valid sample for %s during the recording %q", spoken(r.e.patient(silence)), r.ask.Name))
 	}
 }
 

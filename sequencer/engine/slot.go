@@ -160,7 +160,7 @@ const (
 )
 
 func (e *Engine) confirmVoltage(ctx context.Context, s *slot, op string, good func(float64) bool, want string) error {
-	until := e.clock.Now().Add(confirmWithin)
+	until := e.clock.Now().Add(e.patient(confirmWithin))
 	for {
 		reading, err := instruments.Read(ctx, s.Supply, "supply.voltage")
 		if err != nil {

@@ -272,7 +272,7 @@ func (w *watch) values(g *guarding) map[string]float64 {
 	values := map[string]float64{}
 	for _, name := range g.Check.Readings() {
 		values[name] = math.NaN()
-		if c := w.channel(g.slot, name); c != nil && w.e.clock.Now().Sub(c.at) <= max(g.Tolerate, 2*roundEvery) {
+		if c := w.channel(g.slot, name); c != nil && w.e.clock.Now().Sub(c.at) <= w.e.patient(max(g.Tolerate, 2*roundEvery)) {
 			values[name] = c.newest
 		}
 	}
