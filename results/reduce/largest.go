@@ -7,18 +7,20 @@ import (
 	"slices"
 	"sort"
 
+	"gonum.org/v1/gonum/stat/distuv"
+
 	"proofrate/limits/quantity"
 )
 
 func nonlinearity(_ context.Context, in Input) quantity.Measured {
 	ofReading := in.Options.Relative == "reading"
-	return largest(in, "no rate is as large as the least that counts", func(s Sweep) []float64 {
+	return largest(in, false, "no rate is as large as the least that counts", func(s Sweep) []float64 {
 		return s.relativeResiduals(in.Gyro.Range, ofReading, in.Options.Least)
 	})
 }
 
 func hysteresis(_ context.Context, in Input) quantity.Measured {
-	return largest(in, "no rate was come to from both sides; a full traverse is needed (0, +, 0, -, 0, +)", func(s Sweep) []float64 {
+	return largest(in, true, "no rate was come to from both sides; a full traverse is needed (0, +, 0, -, 0, +)", func(s Sweep) []float64 {
 		return s.relativeGaps(in.Gyro.Range)
 	})
 }
@@ -43,7 +45,7 @@ const (
 // upper bound, and its uncertainty the spread that noise alone makes.
 //
 // Draws are of vectors e, never of samples; their stream comes from the seed.
-func largest(in Input, nothing string, residuals func(Sweep) []float64) quantity.Measured {
+func largest(in Input, alike bool, nothing string, residuals func(Sweep) []float64) quantity.Measured {
 	m, reason := sweepOf(in)
 	if m == nil {
 		return quantity.Voided(ratio, reason)
@@ -53,24 +55,44 @@ func largest(in Input, nothing string, residuals func(Sweep) []float64) quantity
 		return quantity.Voided(ratio, nothing)
 	}
 	top, at := maximum(measured)
-	b := behind{measured: measured, top: top, at: at, noise: m.noiseOf(residuals, rand.New(rand.NewPCG(in.Seed, largestStream)))}
+	g := m.gradient(func(s Sweep) float64 { return residuals(s)[at] })
+	b := behind{measured: measured, top: top, at: at, noise: m.noiseOf(residuals, g, rand.New(rand.NewPCG(in.Seed, largestStream)))}
+	b.shape, b.size = measured, top
+	if alike {
+		b.shrink()
+	}
 	b.explore()
-	draws := b.quantiles()
+	parts := m.parts(g)
 	value := b.value(top)
-	result := quantity.Sample(draws, value, ratio, nil)
+	result := quantity.Sample(widened(b.quantiles(), value, quantity.T(0, ratio, parts).DoF), value, ratio, nil)
 	result.U = b.spread(value)
 	if b.x[0] == 0 && b.exceeds[0] > 1.0/40 {
 		result.Family, result.Upper, result.U = quantity.Bound, true, b.spread(0)
 		result.Low, result.High = result.Interval(0.95)
 	}
 	result.Budget = []quantity.Line{{Name: "largest residual as measured", Value: top, DoF: math.Inf(1)}, {Name: "largest that noise alone makes", Value: b.alone, DoF: math.Inf(1)}}
-	result.Budget = append(result.Budget, m.shares(m.gradient(func(s Sweep) float64 { return residuals(s)[at] }), result.U)...)
+	result.Budget = append(result.Budget, shares(parts, result.U)...)
 	return result
 }
 
+// widened moves quantiles away from the value as Student's distribution of so many degrees of freedom is wider than the
+// normal one: the noise that was drawn is itself known only as well as that.
+func widened(quantiles []float64, value, dof float64) []float64 {
+	if math.IsInf(dof, 1) {
+		return quantiles
+	}
+	student := distuv.StudentsT{Sigma: 1, Nu: dof}
+	for i, q := range quantiles {
+		p := (float64(i) + 0.5) / float64(len(quantiles))
+		if z := distuv.UnitNormal.Quantile(p); math.Abs(z) > 1e-3 {
+			quantiles[i] = math.Max(0, value+(q-value)*student.Quantile(p)/z)
+		}
+	}
+	return quantiles
+}
+
 // shares are the sources' parts of an uncertainty u, as they share in the variance of the largest residual.
-func (m *measuredSweep) shares(g []float64, u float64) []quantity.Line {
-	lines := m.parts(g)
+func shares(lines []quantity.Line, u float64) []quantity.Line {
 	total := 0.0
 	for _, l := range lines {
 		total = math.Hypot(total, l.Contribution)
@@ -94,22 +116,58 @@ func maximum(list []float64) (top float64, at int) {
 // behind looks for the largest true residual behind a measured one, on a grid of x from as low as noise may have lifted it.
 type behind struct {
 	measured []float64
-	top      float64 // the largest of them, and its index
+	top      float64 // the largest of them, and its place
 	at       int
 	noise    [][]float64
+	shape    []float64 // the measured ones, shrunk; and the largest of them
+	size     float64
 	x        []float64
 	exceeds  []float64 // P(M(x) >= top), rising
 	typical  []float64 // median of M(x), rising
 	alone    float64   // the mean of M(0)
 }
 
+// shrink moves the sizes of the measured residuals toward their mean, as far as noise makes them differ. It suits what is
+// alike, as the gaps of one hysteresis are; the residuals of a bent line are not.
+//
+//	|t_i| = a + max(0, 1 - (n-3) s^2 / sum (|r_i| - a)^2) (|r_i| - a)
+//
+// a their mean, s^2 the mean variance of the noise. Source: Efron and Morris, JASA 70 (1975) 311.
+func (b *behind) shrink() {
+	n := float64(len(b.measured))
+	var mean, square, noise float64
+	for _, r := range b.measured {
+		mean += math.Abs(r) / n
+	}
+	for _, r := range b.measured {
+		square += (math.Abs(r) - mean) * (math.Abs(r) - mean)
+	}
+	for _, e := range b.noise {
+		for _, x := range e {
+			noise += x * x / n / float64(len(b.noise))
+		}
+	}
+	keep := 1.0
+	if n > 3 {
+		keep = math.Max(0, 1-(n-3)*noise/square)
+	}
+	b.shape, b.size = nil, 0
+	for _, r := range b.measured {
+		size := mean + keep*(math.Abs(r)-mean)
+		b.shape = append(b.shape, math.Copysign(size, r))
+		b.size = math.Max(b.size, size)
+	}
+}
+
 // largestFor gives draws of M(x).
 func (b *behind) largestFor(x float64) []float64 {
-	truth := make([]float64, len(b.measured))
-	for i, r := range b.measured {
-		truth[i] = math.Max(-x, math.Min(x, r))
+	truth := make([]float64, len(b.shape))
+	for i, t := range b.shape {
+		truth[i] = math.Max(-x, math.Min(x, t))
+		if x > b.size {
+			truth[i] = t * x / b.size
+		}
 	}
-	truth[b.at] = math.Copysign(x, b.measured[b.at])
 	list := make([]float64, len(b.noise))
 	for d, e := range b.noise {
 		most := 0.0
@@ -144,10 +202,22 @@ func (b *behind) explore() {
 }
 
 // quantiles of the truth's distribution, at (k+1/2)/largestDraws.
+//
+// Above the median they are at least those of the one largest residual by itself, m + z_p s: which residual is truly the
+// largest is not known, but it was measured as no more than m, whatever the others are.
 func (b *behind) quantiles() []float64 {
+	var square float64
+	for _, e := range b.noise {
+		square += e[b.at] * e[b.at] / float64(len(b.noise))
+	}
+	s := math.Sqrt(square)
 	draws := make([]float64, largestDraws)
 	for k := range draws {
-		draws[k] = lookup(b.exceeds, b.x, (float64(k)+0.5)/largestDraws)
+		p := (float64(k) + 0.5) / largestDraws
+		draws[k] = lookup(b.exceeds, b.x, p)
+		if p > 0.5 {
+			draws[k] = math.Max(draws[k], b.top+s*distuv.UnitNormal.Quantile(p))
+		}
 	}
 	return draws
 }

@@ -1,6 +1,7 @@
 package reduce
 
 import (
+	"cmp"
 	"math"
 	"math/rand/v2"
 	"slices"
@@ -16,8 +17,7 @@ type measuredSweep struct {
 	white         []float64      // standard uncertainty of each output from white noise and rounding, rad/s
 	reading       []float64      // of each input, from reading the table
 	flicker, walk [][]float64    // covariance of the outputs for B = 1 rad/s and for K = 1 rad/s/sqrt(s)
-	fitted        coefficients   // B and K
-	believed      []coefficients // draws of them
+	slow          []coefficients // what is believed of B and K
 	centripetal   float64        // s: output from the acceleration at the slot's radius is this times the rate squared
 	bench         Bench
 	gyro          Gyro
@@ -76,27 +76,22 @@ func sweepOf(in Input) (*measuredSweep, string) {
 	}
 	m.flicker = coefficients{termB: 1}.windows(windows)
 	m.walk = coefficients{termK: 1}.windows(windows)
-	m.fitted = fit.got
-	m.believed = fit.believe().draws(in.Seed, slowDraws)
+	m.slow = fit.believe().draws(in.Seed, slowDraws)
 	return m, ""
 }
 
 // parts is the budget of a figure that is linear in the outputs, f = sum g_i y_i: each source by its own covariance.
 //
-// The slow noise's part is that of the fitted B and K, with the degrees of freedom that the spread of what is believed
-// of it stands for, 1/(2 (u(u)/u)^2). Source: JCGM 100:2008, G.4.2.
+// The slow noise's part is the median over what is believed of B and K, with the degrees of freedom that its spread
+// stands for, 1/(2 (u(u)/u)^2). Source: JCGM 100:2008, G.4.2.
 func (m *measuredSweep) parts(g []float64) []quantity.Line {
-	var white, reading, flicker, walk, centripetal float64
+	var white, reading, centripetal float64
 	for i := range g {
 		white += g[i] * g[i] * m.white[i] * m.white[i]
 		reading += g[i] * g[i] * m.reading[i] * m.reading[i]
 		centripetal += g[i] * m.Sweep[i].Input * m.Sweep[i].Input
-		for j := range g {
-			flicker += g[i] * g[j] * m.flicker[i][j]
-			walk += g[i] * g[j] * m.walk[i][j]
-		}
 	}
-	slow, spread := m.slowOf(flicker, walk)
+	slow, spread, _ := m.slowOf(m.slowVariance(g))
 	line := func(name string, u, dof float64) quantity.Line {
 		return quantity.Line{Name: name, U: u, Sensitivity: 1, Contribution: u, DoF: dof}
 	}
@@ -104,17 +99,25 @@ func (m *measuredSweep) parts(g []float64) []quantity.Line {
 		line("slow noise", slow, slow*slow/(2*spread*spread)), line("centripetal acceleration", math.Abs(centripetal*m.centripetal), math.Inf(1))})
 }
 
-// slowOf is the standard uncertainty from slow noise, fitted, of something whose variance is flicker B^2 + walk K^2, and
-// half the width of the middle 68 % of what is believed of it.
-func (m *measuredSweep) slowOf(flicker, walk float64) (u, spread float64) {
+// slowOf is the standard uncertainty from slow noise of something whose variance is flicker B^2 + walk K^2: the median of
+// what is believed, half the width of the middle 68 %, and the B and K that make the median.
+func (m *measuredSweep) slowOf(flicker, walk float64) (u, spread float64, c coefficients) {
 	of := func(c coefficients) float64 { return math.Sqrt(math.Max(c[termB]*flicker+c[termK]*walk, 0)) }
-	believed := make([]float64, len(m.believed))
-	for i, c := range m.believed {
-		believed[i] = of(c)
+	sorted := slices.Clone(m.slow)
+	slices.SortStableFunc(sorted, func(a, b coefficients) int { return cmp.Compare(of(a), of(b)) })
+	n := len(sorted)
+	return of(sorted[n/2]), (of(sorted[n*84/100]) - of(sorted[n*16/100])) / 2, sorted[n/2]
+}
+
+// slowVariance are the factors of B^2 and K^2 in the variance of sum g_i y_i.
+func (m *measuredSweep) slowVariance(g []float64) (flicker, walk float64) {
+	for i := range g {
+		for j := range g {
+			flicker += g[i] * g[j] * m.flicker[i][j]
+			walk += g[i] * g[j] * m.walk[i][j]
+		}
 	}
-	slices.Sort(believed)
-	n := len(believed)
-	return of(m.fitted), (believed[n*84/100] - believed[n*16/100]) / 2
+	return flicker, walk
 }
 
 // gradient of a figure by the outputs, by central differences: the figures are smooth in them.
@@ -131,9 +134,11 @@ func (m *measuredSweep) gradient(figure func(Sweep) float64) []float64 {
 	return g
 }
 
-// noiseOf draws what the sources make of residuals that are zero.
-func (m *measuredSweep) noiseOf(residuals func(Sweep) []float64, random *rand.Rand) [][]float64 {
-	b, k := math.Sqrt(m.fitted[termB]), math.Sqrt(m.fitted[termK])
+// noiseOf draws what the sources make of residuals that are zero, with the B and K that are the median for the residual
+// whose gradient by the outputs is g.
+func (m *measuredSweep) noiseOf(residuals func(Sweep) []float64, g []float64, random *rand.Rand) [][]float64 {
+	_, _, c := m.slowOf(m.slowVariance(g))
+	b, k := math.Sqrt(c[termB]), math.Sqrt(c[termK])
 	n := len(m.Sweep)
 	flicker, walk := factor(m.flicker), factor(m.walk)
 	line := m.Line()
